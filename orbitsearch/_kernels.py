@@ -1,0 +1,1058 @@
+"""All compiled code: Taylor steps of three equal masses, eight starts side by side.
+
+With A = r2 - r1, B = r3 - r2, C = r1 - r3 (so A + B + C = 0) the equations of motion read
+X'' = S - 3 X q_X with q_X = |X|^(-3) and S = A q_A + B q_B + C q_C, for X in {A, B, C}.  Every pair
+keeps its own series although one is redundant: the difference of two long vectors would spoil the
+short one in a close approach.  A state is 12 numbers, (A, B, C, A', B', C').
+
+Eight starts advance in the lanes of one vector.  Numba has no vector type of its own, and leaving
+the lanes to the auto-vectoriser gave 0.5 microseconds a lane-step against 0.25 with explicit
+vectors, so a small one is defined below; LLVM splits it into whatever registers the machine has.
+In plain Python (``NUMBA_DISABLE_JIT=1``) a lane vector is a row of a numpy array and the same code
+runs, slowly, under a debugger or a coverage tool.
+
+Everything lives in this one file on purpose: numba's disk cache looks at the file that holds a
+function, and would not notice a change of a compiled function, or a table, imported from elsewhere.
+
+References
+----------
+À. Jorba, M. Zou, Experimental Mathematics 14 (2005) 99-117: recurrences for products and powers
+(section 2), step size from the last two coefficients (section 3.2).
+"""
+
+# mypy: disable-error-code="no-untyped-def, no-untyped-call, untyped-decorator, misc"
+
+from __future__ import annotations
+
+import math
+import operator
+from pathlib import Path
+
+import numpy as np
+from llvmlite import ir
+from numba import njit, types
+from numba.core import cgutils
+from numba.extending import intrinsic, models, overload, register_model
+from numpy.typing import NDArray
+
+__all__ = [
+    "EVENTS",
+    "LANES",
+    "ORDER",
+    "STATUS_BUDGET",
+    "STATUS_COLLISION",
+    "STATUS_DONE",
+    "STATUS_ESCAPE",
+    "dense",
+    "flow",
+    "is_cached",
+    "scan",
+    "track",
+    "track_events",
+    "workspace",
+]
+
+LANES = 8
+ORDER = 20
+TERMS = ORDER + 1
+
+STATUS_DONE = 0
+STATUS_COLLISION = 1
+STATUS_ESCAPE = 2
+STATUS_BUDGET = 3
+
+# Rows of the workspace: Ax Ay Bx By Cx Cy, then for each pair |X|^2, |X|^-3, k/2 times the k-th
+# coefficient of |X|^2, and the step length.  The variational part follows: |X|^-5, u = 3 X |X|^-5,
+# and the symmetric matrix G = I |X|^-3 - 3 X X^T |X|^-5; then six rows for each tangent.
+S, Q, D, H = 6, 9, 12, 15
+P, U, G, TANGENT = 16, 19, 25, 34
+
+# Event functions: 0 twice the signed area, 1..3 difference of the two sides that meet in that body
+# (squared), 4 rate of kinetic energy, 5..7 half the rate of the squared sides A, B, C.
+EVENTS = 8
+SCAN_EVENTS = 5
+
+# h = exp(-2 - 0.7/(N-1)) times the estimated radius of convergence, Jorba & Zou section 3.2.1.
+SAFETY = math.exp(-2.0 - 0.7 / (ORDER - 1))
+
+ESCAPE_RATIO2 = 15.0**2
+ESCAPE_DISTANCE = 5.0
+ESCAPE_MARGIN = 1.1
+
+
+# ---------------------------------------------------------------- lane vectors
+
+
+class LaneVector(types.Type):
+    """Numba type of one double for each lane."""
+
+    def __init__(self):
+        super().__init__(name="LaneVector")
+
+
+LANE_VECTOR = LaneVector()
+_IR = ir.VectorType(ir.DoubleType(), LANES)
+_I32 = ir.IntType(32)
+
+
+@register_model(LaneVector)
+class _LaneVectorModel(models.PrimitiveModel):
+    def __init__(self, dmm, fe_type):
+        super().__init__(dmm, fe_type, _IR)
+
+
+def _arithmetic(instruction):
+    @intrinsic
+    def apply(typingctx, a, b):
+        def codegen(context, builder, signature, args):
+            return getattr(builder, instruction)(*args, flags=("contract",))
+
+        return LANE_VECTOR(LANE_VECTOR, LANE_VECTOR), codegen
+
+    return apply
+
+
+@intrinsic
+def _broadcast(typingctx, x):
+    def codegen(context, builder, signature, args):
+        nothing = ir.Constant(_IR, ir.Undefined)
+        first = builder.insert_element(nothing, args[0], ir.Constant(_I32, 0))
+        mask = ir.Constant(ir.VectorType(_I32, LANES), [0] * LANES)
+        return builder.shuffle_vector(first, nothing, mask)
+
+    return LANE_VECTOR(types.float64), codegen
+
+
+@intrinsic
+def _vector_sqrt(typingctx, x):
+    def codegen(context, builder, signature, args):
+        kind = ir.FunctionType(_IR, [_IR])
+        function = cgutils.get_or_insert_function(builder.module, kind, f"llvm.sqrt.v{LANES}f64")
+        return builder.call(function, args)
+
+    return LANE_VECTOR(LANE_VECTOR), codegen
+
+
+def _address(context, builder, array_type, array, row, term):
+    base = context.make_array(array_type)(context, builder, array)
+    terms = builder.extract_value(base.shape, 1)
+    index = builder.mul(builder.add(builder.mul(row, terms), term), ir.Constant(row.type, LANES))
+    return builder.bitcast(builder.gep(base.data, [index]), _IR.as_pointer())
+
+
+# align=8, not 64: the workspace is aligned for speed, but nothing may crash when it is not.
+@intrinsic
+def _load(typingctx, array, row, term):
+    def codegen(context, builder, signature, args):
+        return builder.load(_address(context, builder, signature.args[0], *args), align=8)
+
+    return LANE_VECTOR(array, types.intp, types.intp), codegen
+
+
+@intrinsic
+def _store(typingctx, array, row, term, value):
+    def codegen(context, builder, signature, args):
+        address = _address(context, builder, signature.args[0], *args[:3])
+        builder.store(args[3], address, align=8)
+        return context.get_dummy_value()
+
+    return types.void(array, types.intp, types.intp, LANE_VECTOR), codegen
+
+
+def splat(x):
+    """The same number in every lane."""
+    return np.full(LANES, x)
+
+
+def load(array, row, term):
+    """Lanes of coefficient `term` of series `row`."""
+    return array[row, term].copy()
+
+
+def store(array, row, term, value):
+    """Set the lanes of coefficient `term` of series `row`."""
+    array[row, term] = value
+
+
+def root(x):
+    """Square root of a number or of each lane."""
+    return np.sqrt(x)
+
+
+@overload(splat)
+def _splat_compiled(x):
+    return lambda x: _broadcast(float(x))
+
+
+@overload(load)
+def _load_compiled(array, row, term):
+    return lambda array, row, term: _load(array, row, term)
+
+
+@overload(store)
+def _store_compiled(array, row, term, value):
+    return lambda array, row, term, value: _store(array, row, term, value)
+
+
+@overload(root)
+def _root_compiled(x):
+    if isinstance(x, LaneVector):
+        return lambda x: _vector_sqrt(x)
+    return lambda x: math.sqrt(x)
+
+
+def _define(python_operator, apply):
+    @overload(python_operator)
+    def compiled(a, b):
+        if isinstance(a, LaneVector) and isinstance(b, LaneVector):
+            return lambda a, b: apply(a, b)
+        if isinstance(a, LaneVector) and isinstance(b, types.Float):
+            return lambda a, b: apply(a, _broadcast(b))
+        if isinstance(b, LaneVector) and isinstance(a, types.Float):
+            return lambda a, b: apply(_broadcast(a), b)
+        return None
+
+
+_define(operator.add, _arithmetic("fadd"))
+_define(operator.sub, _arithmetic("fsub"))
+_define(operator.mul, _arithmetic("fmul"))
+_define(operator.truediv, _arithmetic("fdiv"))
+
+# "contract" lets LLVM fuse a*b + c; nothing else of fastmath, which would break compensated sums.
+_jit = njit(cache=True, nogil=True, error_model="numpy", fastmath={"contract"})
+
+
+# ---------------------------------------------------------------- Taylor series
+
+
+@_jit
+def _pair(w, p, n):
+    """Order n >= 1 of |X|^2, |X|^-3 and X |X|^-3 for pair p; returns the last, x and y.
+
+    For q = s^α, n s_0 q_n = Σ_{k=1..n} ((α+1) k - n) s_k q_{n-k} (Jorba & Zou, Proposition 2.1);
+    here α = -3/2 and d_k = k s_k / 2.  Six independent sums, because a fused multiply-add takes
+    four cycles and two can start in each.
+    """
+    x, y = 2 * p, 2 * p + 1
+    sx = splat(0.0)
+    sy = splat(0.0)
+    qs = splat(0.0)
+    qd = splat(0.0)
+    fx = splat(0.0)
+    fy = splat(0.0)
+    for k in range(1, n):
+        xk = load(w, x, k)
+        yk = load(w, y, k)
+        q = load(w, Q + p, n - k)
+        sx = sx + xk * load(w, x, n - k)
+        sy = sy + yk * load(w, y, n - k)
+        qs = qs + load(w, S + p, k) * q
+        qd = qd + load(w, D + p, k) * q
+        fx = fx + xk * q
+        fy = fy + yk * q
+    x0 = load(w, x, 0)
+    y0 = load(w, y, 0)
+    xn = load(w, x, n)
+    yn = load(w, y, n)
+    q0 = load(w, Q + p, 0)
+    m = float(n)
+    sn = sx + sy + 2.0 * (x0 * xn + y0 * yn)
+    dn = (0.5 * m) * sn
+    qn = splat(0.0) - (m * qs + qd + (m * sn + dn) * q0) / (m * load(w, S + p, 0))
+    store(w, S + p, n, sn)
+    store(w, D + p, n, dn)
+    store(w, Q + p, n, qn)
+    return fx + x0 * qn + xn * q0, fy + y0 * qn + yn * q0
+
+
+@_jit
+def _extend(w, row, n, ax, ay, bx, by, cx, cy):
+    """Coefficient n + 2 of the three pairs from order n of X |X|^-3."""
+    sx = ax + bx + cx
+    sy = ay + by + cy
+    c = 1.0 / ((n + 1.0) * (n + 2.0))
+    store(w, row, n + 2, c * (sx - 3.0 * ax))
+    store(w, row + 1, n + 2, c * (sy - 3.0 * ay))
+    store(w, row + 2, n + 2, c * (sx - 3.0 * bx))
+    store(w, row + 3, n + 2, c * (sy - 3.0 * by))
+    store(w, row + 4, n + 2, c * (sx - 3.0 * cx))
+    store(w, row + 5, n + 2, c * (sy - 3.0 * cy))
+
+
+@_jit
+def _series(w):
+    """Fill coefficients 2..ORDER of all six coordinates from coefficients 0 and 1."""
+    for p in range(3):
+        x = load(w, 2 * p, 0)
+        y = load(w, 2 * p + 1, 0)
+        s = x * x + y * y
+        store(w, S + p, 0, s)
+        store(w, D + p, 0, splat(0.0))
+        store(w, Q + p, 0, 1.0 / (s * root(s)))
+    qa = load(w, Q, 0)
+    qb = load(w, Q + 1, 0)
+    qc = load(w, Q + 2, 0)
+    _extend(
+        w, 0, 0,
+        load(w, 0, 0) * qa, load(w, 1, 0) * qa,
+        load(w, 2, 0) * qb, load(w, 3, 0) * qb,
+        load(w, 4, 0) * qc, load(w, 5, 0) * qc,
+    )  # fmt: skip
+    for n in range(1, ORDER - 1):
+        ax, ay = _pair(w, 0, n)
+        bx, by = _pair(w, 1, n)
+        cx, cy = _pair(w, 2, n)
+        _extend(w, 0, n, ax, ay, bx, by, cx, cy)
+
+
+@_jit
+def _pair_gradient(w, p, n):
+    """Order n of G = I |X|^-3 - 3 X X^T |X|^-5 for pair p (same power rule, α = -5/2).
+
+    G_yy needs no product of its own: 3 |X|^2 |X|^-5 = 3 |X|^-3, so u_y y = 3 q - u_x x.
+    """
+    x, y, u = 2 * p, 2 * p + 1, U + 2 * p
+    ps = splat(0.0)
+    pd = splat(0.0)
+    ux = splat(0.0)
+    uy = splat(0.0)
+    for k in range(1, n):
+        pk = load(w, P + p, n - k)
+        ps = ps + load(w, S + p, k) * pk
+        pd = pd + load(w, D + p, k) * pk
+        ux = ux + load(w, x, k) * pk
+        uy = uy + load(w, y, k) * pk
+    s0 = load(w, S + p, 0)
+    if n == 0:
+        pn = load(w, Q + p, 0) / s0
+        ux = load(w, x, 0) * pn
+        uy = load(w, y, 0) * pn
+    else:
+        m = float(n)
+        p0 = load(w, P + p, 0)
+        ps = ps + load(w, S + p, n) * p0
+        pd = pd + load(w, D + p, n) * p0
+        pn = splat(0.0) - (m * ps + 3.0 * pd) / (m * s0)
+        ux = ux + load(w, x, 0) * pn + load(w, x, n) * p0
+        uy = uy + load(w, y, 0) * pn + load(w, y, n) * p0
+    store(w, P + p, n, pn)
+    store(w, u, n, 3.0 * ux)
+    store(w, u + 1, n, 3.0 * uy)
+    uxx = splat(0.0)
+    uxy = splat(0.0)
+    for k in range(n + 1):
+        uk = load(w, u, k)
+        uxx = uxx + uk * load(w, x, n - k)
+        uxy = uxy + uk * load(w, y, n - k)
+    qn = load(w, Q + p, n)
+    store(w, G + 3 * p, n, qn - uxx)
+    store(w, G + 3 * p + 1, n, splat(0.0) - uxy)
+    store(w, G + 3 * p + 2, n, uxx - 2.0 * qn)
+
+
+@_jit
+def _pair_tangent(w, p, row, n):
+    """Order n of G δX for pair p of the tangent whose series start at `row`."""
+    g = G + 3 * p
+    xx = splat(0.0)
+    xy = splat(0.0)
+    yx = splat(0.0)
+    yy = splat(0.0)
+    for k in range(n + 1):
+        dx = load(w, row + 2 * p, n - k)
+        dy = load(w, row + 2 * p + 1, n - k)
+        gxy = load(w, g + 1, k)
+        xx = xx + load(w, g, k) * dx
+        xy = xy + gxy * dy
+        yx = yx + gxy * dx
+        yy = yy + load(w, g + 2, k) * dy
+    return xx + xy, yx + yy
+
+
+@_jit
+def _tangent_series(w, tangents):
+    """Series of the first variational equations δX'' = Σ G δX - 3 G δX, after `_series`."""
+    for n in range(ORDER - 1):
+        for p in range(3):
+            _pair_gradient(w, p, n)
+        for i in range(tangents):
+            row = TANGENT + 6 * i
+            ax, ay = _pair_tangent(w, 0, row, n)
+            bx, by = _pair_tangent(w, 1, row, n)
+            cx, cy = _pair_tangent(w, 2, row, n)
+            _extend(w, row, n, ax, ay, bx, by, cx, cy)
+
+
+@_jit
+def _natural_step(w, lane):
+    """Step length from the last two coefficients of each pair, relative to that pair."""
+    last = 0.0
+    before = 0.0
+    for p in range(3):
+        x, y = 2 * p, 2 * p + 1
+        # Not squared: in a passage at 1e-5 the 20th coefficient is of order 1e155.
+        length = math.sqrt(w[S + p, 0, lane])
+        last = max(last, max(abs(w[x, ORDER, lane]), abs(w[y, ORDER, lane])) / length)
+        x_before, y_before = w[x, ORDER - 1, lane], w[y, ORDER - 1, lane]
+        before = max(before, max(abs(x_before), abs(y_before)) / length)
+    # A triple at rest has no odd coefficients; the floor keeps plain Python from log(0).
+    steepest = max(math.log(max(last, 1e-300)) / ORDER, math.log(max(before, 1e-300)) / (ORDER - 1))
+    return SAFETY * math.exp(-steepest)
+
+
+@_jit
+def _advance(w, rows):
+    """Move `rows` series (starting at 0, then at TANGENT) to the end of the step in row H."""
+    h = load(w, H, 0)
+    for i in range(rows):
+        row = i if i < 6 else TANGENT + i - 6
+        value = load(w, row, ORDER)
+        rate = splat(0.0)
+        for k in range(ORDER - 1, -1, -1):
+            rate = rate * h + value
+            value = value * h + load(w, row, k)
+        store(w, row, 0, value)
+        store(w, row, 1, rate)
+
+
+@_jit
+def _close_triangle(w, lane, tangents):
+    """Restore A + B + C = 0: the longest side becomes minus the sum of the others.
+
+    Rounding alone moves the sum by an ulp a step, which then drifts; left alone it spoilt the
+    figure-eight by 1e-4 within 1,000 periods.
+    """
+    long = 0
+    for p in range(1, 3):
+        if (
+            w[2 * p, 0, lane] ** 2 + w[2 * p + 1, 0, lane] ** 2
+            > w[2 * long, 0, lane] ** 2 + w[2 * long + 1, 0, lane] ** 2
+        ):
+            long = p
+    i = 2 * long
+    j = (i + 2) % 6
+    k = (i + 4) % 6
+    for block in range(tangents + 1):
+        row = 0 if block == 0 else TANGENT + 6 * (block - 1)
+        for axis in range(2):
+            for term in range(2):
+                w[row + i + axis, term, lane] = -(
+                    w[row + j + axis, term, lane] + w[row + k + axis, term, lane]
+                )
+
+
+# ---------------------------------------------------------------- events
+
+
+@_jit
+def _power_rate(x, y, u, v, fx, fy, q, s):
+    """Value and rate of X·X' |X|^-3 for one pair; (fx, fy) is its second derivative."""
+    d = x * u + y * v
+    return d * q, (u * u + v * v + x * fx + y * fy) * q - 3.0 * d * d * q / s
+
+
+@_jit
+def _event(e, ax, ay, bx, by, cx, cy, au, av, bu, bv, cu, cv):
+    """Value and rate of event function e; works on numbers and on lane vectors alike."""
+    if e == 0:
+        return ax * by - ay * bx, au * by - av * bx + ax * bv - ay * bu
+    a = ax * ax + ay * ay
+    b = bx * bx + by * by
+    c = cx * cx + cy * cy
+    da = ax * au + ay * av
+    db = bx * bu + by * bv
+    dc = cx * cu + cy * cv
+    if e == 1:
+        return a - c, 2.0 * (da - dc)
+    if e == 2:
+        return b - a, 2.0 * (db - da)
+    if e == 3:
+        return c - b, 2.0 * (dc - db)
+    qa = 1.0 / (a * root(a))
+    qb = 1.0 / (b * root(b))
+    qc = 1.0 / (c * root(c))
+    sx = ax * qa + bx * qb + cx * qc
+    sy = ay * qa + by * qb + cy * qc
+    if e == 4:
+        # K' = U' = -Σ X·X' |X|^-3: energy is conserved, so no acceleration is needed for the value.
+        fa, ra = _power_rate(ax, ay, au, av, sx - 3.0 * ax * qa, sy - 3.0 * ay * qa, qa, a)
+        fb, rb = _power_rate(bx, by, bu, bv, sx - 3.0 * bx * qb, sy - 3.0 * by * qb, qb, b)
+        fc, rc = _power_rate(cx, cy, cu, cv, sx - 3.0 * cx * qc, sy - 3.0 * cy * qc, qc, c)
+        zero = fa - fa
+        return zero - (fa + fb + fc), zero - (ra + rb + rc)
+    if e == 5:
+        return da, au * au + av * av + ax * (sx - 3.0 * ax * qa) + ay * (sy - 3.0 * ay * qa)
+    if e == 6:
+        return db, bu * bu + bv * bv + bx * (sx - 3.0 * bx * qb) + by * (sy - 3.0 * by * qb)
+    return dc, cu * cu + cv * cv + cx * (sx - 3.0 * cx * qc) + cy * (sy - 3.0 * cy * qc)
+
+
+@_jit
+def _state_at(c, h, x):
+    """State x, shape (12,), at h from the expansion point of series c, shape (6+, TERMS)."""
+    for row in range(6):
+        value = c[row, ORDER]
+        rate = 0.0
+        for k in range(ORDER - 1, -1, -1):
+            rate = rate * h + value
+            value = value * h + c[row, k]
+        x[row] = value
+        x[row + 6] = rate
+
+
+@_jit
+def _event_at(c, h, e, x):
+    _state_at(c, h, x)
+    return _event(e, x[0], x[1], x[2], x[3], x[4], x[5], x[6], x[7], x[8], x[9], x[10], x[11])
+
+
+@_jit
+def _root_between(c, e, lo, flo, hi, fhi, x):
+    """Root of event function e between lo and hi: Newton kept inside a shrinking bracket.
+
+    The first trial is the secant point; each is checked against the bracket and replaced by its
+    middle when it falls outside.  On return x holds the state at the root.
+    """
+    h = lo - flo * (hi - lo) / (fhi - flo)
+    width = abs(hi - lo)
+    for _ in range(60):
+        f, rate = _event_at(c, h, e, x)
+        if f == 0.0:
+            return h
+        if (f < 0.0) == (flo < 0.0):
+            lo = h
+            flo = f
+        else:
+            hi = h
+        trial = h - f / rate
+        if not (min(lo, hi) < trial < max(lo, hi)):
+            trial = 0.5 * (lo + hi)
+        moved = abs(trial - h)
+        h = trial
+        if moved <= 1e-14 * width:
+            break
+    _state_at(c, h, x)
+    return h
+
+
+@_jit
+def _turn_between(c, e, h, d0, d1, f0, x):
+    """A point inside (0, h) where event function e has crossed zero and will cross back, or 0.
+
+    Called when both ends have one sign but the function heads for zero at both: halve the interval
+    on the sign of the rate until the extremum is found or the sign changes.
+    """
+    lo = 0.0
+    hi = h
+    for _ in range(40):
+        middle = 0.5 * (lo + hi)
+        f, rate = _event_at(c, middle, e, x)
+        if (f < 0.0) != (f0 < 0.0):
+            return middle
+        if (rate < 0.0) == (d0 < 0.0):
+            lo = middle
+        else:
+            hi = middle
+        # The function cannot reach zero any more on what is left of the interval.
+        if abs(f) > 2.0 * max(abs(d0), abs(d1), abs(rate)) * abs(hi - lo):
+            return 0.0
+    return 0.0
+
+
+@_jit
+def _roots(c, e, h, f0, d0, f1, d1, x, out):
+    """Roots of event function e in (0, h], at most two, into out; returns their number.
+
+    f0 == 0 means that the step starts on the root itself (a start in its own set): not reported.
+    """
+    if f0 == 0.0:
+        return 0
+    if f1 == 0.0 or (f0 < 0.0) != (f1 < 0.0):
+        out[0] = _root_between(c, e, 0.0, f0, h, f1, x) if f1 != 0.0 else h
+        return 1
+    s = 1.0 if h > 0.0 else -1.0
+    if f0 * d0 * s < 0.0 and f1 * d1 * s > 0.0:
+        middle = _turn_between(c, e, h, d0, d1, f0, x)
+        if middle != 0.0:
+            fm, _ = _event_at(c, middle, e, x)
+            out[0] = _root_between(c, e, 0.0, f0, middle, fm, x)
+            out[1] = _root_between(c, e, middle, fm, h, f1, x)
+            return 2
+    return 0
+
+
+@_jit
+def _longest_side(x):
+    """Index of the longest of A, B, C."""
+    a = x[0] ** 2 + x[1] ** 2
+    b = x[2] ** 2 + x[3] ** 2
+    c = x[4] ** 2 + x[5] ** 2
+    if a >= b and a >= c:
+        return 0
+    return 1 if b >= c else 2
+
+
+@_jit
+def _kind_and_residuals(e, x):
+    """Kind of an event and the two residuals that vanish when its state is fixed by a reversal.
+
+    Kinds 1..3: that body is between the others (residuals: half-sides, radial rate of the outer
+    pair); 4..6: body kind-3 is the apex (its rate across the base, rate of the base); 7: kinetic
+    energy is least (rates of A and B).  Kind 8, in line with velocities at right angles, has the
+    residuals of kind 7 at the events of kinds 1..3.  All are free of scale: lengths over the size,
+    r·v over its square root.
+    The side opposite to body k is A, B, C for k = 3, 1, 2.
+    """
+    size = math.sqrt(x[0] ** 2 + x[1] ** 2 + x[2] ** 2 + x[3] ** 2 + x[4] ** 2 + x[5] ** 2)
+    unit = 1.0 / math.sqrt(size)
+    if e >= 4:
+        kind = 7 if e == 4 else 8
+        return kind, (x[0] * x[6] + x[1] * x[7]) * unit, (x[2] * x[8] + x[3] * x[9]) * unit
+    side = _longest_side(x) if e == 0 else e % 3
+    i = 2 * side
+    j = (i + 2) % 6
+    k = (i + 4) % 6
+    base = (x[i] * x[i + 6] + x[i + 1] * x[i + 7]) * unit
+    body = 3 if side == 0 else side
+    if e == 0:
+        near = math.sqrt(x[j] ** 2 + x[j + 1] ** 2)
+        far = math.sqrt(x[k] ** 2 + x[k + 1] ** 2)
+        return body, (near - far) / size, base
+    # v_k = (X_j' - X_k') / 3 with X_j, X_k the sides after and before the base.
+    across = x[i] * (x[j + 7] - x[k + 7]) - x[i + 1] * (x[j + 6] - x[k + 6])
+    return 3 + body, across * unit / 3.0, base
+
+
+@_jit
+def _escapes(x):
+    """Whether one body leaves a binary for good.
+
+    Conservative two-body test: the body is farther than five times the binary can stretch, and its
+    radial speed alone exceeds the escape speed by a margin that covers the quadrupole of the pair.
+    """
+    closest = 0
+    least = np.inf
+    most = 0.0
+    for p in range(3):
+        s = x[2 * p] ** 2 + x[2 * p + 1] ** 2
+        most = max(most, s)
+        if s < least:
+            least = s
+            closest = p
+    if most < ESCAPE_RATIO2 * least:
+        return False
+    i = 2 * closest
+    j = (i + 2) % 6
+    k = (i + 4) % 6
+    binding = 2.0 / math.sqrt(least) - 0.5 * (x[i + 6] ** 2 + x[i + 7] ** 2)
+    if binding <= 0.0:
+        return False
+    dx = 0.5 * (x[j] - x[k])
+    dy = 0.5 * (x[j + 1] - x[k + 1])
+    distance = math.sqrt(dx * dx + dy * dy)
+    if distance * binding < 2.0 * ESCAPE_DISTANCE:
+        return False
+    rate = (dx * 0.5 * (x[j + 6] - x[k + 6]) + dy * 0.5 * (x[j + 7] - x[k + 7])) / distance
+    return rate > 0.0 and 0.5 * rate * rate > ESCAPE_MARGIN * 3.0 / distance
+
+
+# ---------------------------------------------------------------- drivers
+
+
+def workspace(tangents: int = 0) -> NDArray[np.float64]:
+    """Zeroed workspace for `flow` with that many tangents, shape (rows, TERMS, LANES), aligned."""
+    rows = TANGENT + 6 * tangents if tangents else H + 1
+    count = rows * TERMS * LANES
+    raw = np.zeros(count + LANES)
+    offset = (-raw.ctypes.data // 8) % LANES
+    return raw[offset : offset + count].reshape(rows, TERMS, LANES)
+
+
+@_jit
+def _park(w, lane, tangents):
+    """Give an idle lane a harmless state, three bodies at rest in an equilateral triangle."""
+    for row in range(6 + 6 * tangents):
+        r = row if row < 6 else TANGENT + row - 6
+        w[r, 0, lane] = 0.0
+        w[r, 1, lane] = 0.0
+    w[0, 0, lane] = 1.0
+    w[2, 0, lane] = -0.5
+    w[3, 0, lane] = math.sqrt(0.75)
+    w[4, 0, lane] = -0.5
+    w[5, 0, lane] = -math.sqrt(0.75)
+
+
+@_jit
+def _put(w, lane, x):
+    for row in range(6):
+        w[row, 0, lane] = x[row]
+        w[row, 1, lane] = x[row + 6]
+
+
+@_jit
+def _get(w, lane, x):
+    for row in range(6):
+        x[row] = w[row, 0, lane]
+        x[row + 6] = w[row, 1, lane]
+
+
+@_jit
+def flow(w, x, d, times, nearest, max_steps, status, steps):
+    """Carry n states, and m tangents of each, over their own times; results replace the inputs.
+
+    Parameters
+    ----------
+    w : array from `workspace`
+    x : array, shape (n, 12)
+    d : array, shape (n, m, 12)
+        Tangent vectors; m = 0 for none.
+    times : array, shape (n,)
+        May be negative.
+    nearest : array, shape (n,)
+        A pair closer than this ends the start with STATUS_COLLISION.
+    max_steps : int
+    status, steps : integer arrays, shape (n,), filled.
+    """
+    n = x.shape[0]
+    m = d.shape[1]
+    who = np.full(LANES, -1, np.int64)
+    now = np.zeros(LANES)
+    lost = np.zeros(LANES)
+    following = 0
+    running = 0
+    for lane in range(LANES):
+        _park(w, lane, m)
+    while True:
+        for lane in range(LANES):
+            while who[lane] < 0 and following < n:
+                status[following] = STATUS_DONE
+                steps[following] = 0
+                if times[following] != 0.0:
+                    who[lane] = following
+                    running += 1
+                    now[lane] = 0.0
+                    lost[lane] = 0.0
+                    _put(w, lane, x[following])
+                    for i in range(m):
+                        for row in range(6):
+                            w[TANGENT + 6 * i + row, 0, lane] = d[following, i, row]
+                            w[TANGENT + 6 * i + row, 1, lane] = d[following, i, row + 6]
+                following += 1
+        if running == 0:
+            return
+        _series(w)
+        if m > 0:
+            _tangent_series(w, m)
+        for lane in range(LANES):
+            i = who[lane]
+            if i < 0:
+                w[H, 0, lane] = 0.0
+                continue
+            h = _natural_step(w, lane)
+            left = (times[i] - now[lane]) + lost[lane]
+            if not h < abs(left):
+                w[H, 0, lane] = left
+                steps[i] = -steps[i] - 1
+                continue
+            w[H, 0, lane] = h if left > 0.0 else -h
+            steps[i] += 1
+        _advance(w, 6 + 6 * m)
+        for lane in range(LANES):
+            i = who[lane]
+            if i < 0:
+                continue
+            _close_triangle(w, lane, m)
+            # Kahan's sum: `lost` is what the rounded clock is ahead of the true one.
+            h = w[H, 0, lane] - lost[lane]
+            clock = now[lane] + h
+            lost[lane] = (clock - now[lane]) - h
+            now[lane] = clock
+            done = steps[i] < 0
+            if done:
+                steps[i] = -steps[i]
+            for p in range(3):
+                # Negated, so that a state of NaN (two bodies in one place) counts as well.
+                r2 = w[2 * p, 0, lane] ** 2 + w[2 * p + 1, 0, lane] ** 2
+                if not r2 >= nearest[i] ** 2:
+                    status[i] = STATUS_COLLISION
+                    done = True
+            if not done and steps[i] >= max_steps:
+                status[i] = STATUS_BUDGET
+                done = True
+            if done:
+                _get(w, lane, x[i])
+                for j in range(m):
+                    for row in range(6):
+                        d[i, j, row] = w[TANGENT + 6 * j + row, 0, lane]
+                        d[i, j, row + 6] = w[TANGENT + 6 * j + row, 1, lane]
+                _park(w, lane, m)
+                who[lane] = -1
+                running -= 1
+
+
+@_jit
+def _start_events(w, lane, x, f, rate):
+    """Event functions of a fresh start; one that is zero up to rounding is set to exactly zero."""
+    size = 0.0
+    speed = 0.0
+    for row in range(6):
+        size += x[row] ** 2
+        speed += x[row + 6] ** 2
+    for e in range(SCAN_EVENTS):
+        value, slope = _event(
+            e, x[0], x[1], x[2], x[3], x[4], x[5], x[6], x[7], x[8], x[9], x[10], x[11]
+        )
+        scale = size if e < 4 else math.sqrt(speed) / size
+        f[e, lane] = value if abs(value) > 1e-12 * scale else 0.0
+        rate[e, lane] = slope
+
+
+@_jit
+def scan(w, x, times, nearest, max_steps, status, steps, counts, kinds, when, first, second):
+    """Carry n starts to their times and record every event on the way.
+
+    Parameters
+    ----------
+    w, times, nearest, max_steps, status, steps
+        As for `flow`; times must be positive.  Starts that escape end with STATUS_ESCAPE.
+    x : array, shape (n, 12)
+        Replaced by the last states.
+    counts : integer array, shape (n,)
+        Number of events of each start, filled.
+    kinds, when, first, second : arrays, shape (n, capacity)
+        Kind, time and the two residuals of each event (see `_kind_and_residuals`) in the order of
+        the steps, filled.  A start whose events pass the capacity ends with STATUS_BUDGET.
+    """
+    n = x.shape[0]
+    capacity = kinds.shape[1]
+    who = np.full(LANES, -1, np.int64)
+    now = np.zeros(LANES)
+    f = np.zeros((SCAN_EVENTS, LANES))
+    rate = np.zeros((SCAN_EVENTS, LANES))
+    old_f = np.zeros(SCAN_EVENTS)
+    old_rate = np.zeros(SCAN_EVENTS)
+    series = np.zeros((6, TERMS))
+    state = np.zeros(12)
+    roots = np.zeros(2)
+    following = 0
+    running = 0
+    for lane in range(LANES):
+        _park(w, lane, 0)
+    while True:
+        for lane in range(LANES):
+            if who[lane] < 0 and following < n:
+                i = following
+                who[lane] = i
+                status[i] = STATUS_DONE
+                steps[i] = 0
+                counts[i] = 0
+                now[lane] = 0.0
+                _put(w, lane, x[i])
+                _start_events(w, lane, x[i], f, rate)
+                running += 1
+                following += 1
+        if running == 0:
+            return
+        _series(w)
+        for lane in range(LANES):
+            if who[lane] < 0:
+                w[H, 0, lane] = 0.0
+            else:
+                w[H, 0, lane] = _natural_step(w, lane)
+        # The coefficients 0 and 1 are overwritten by the step; events need them.
+        before = _save(w)
+        _advance(w, 6)
+        for lane in range(LANES):
+            i = who[lane]
+            if i < 0:
+                continue
+            steps[i] += 1
+            h = w[H, 0, lane]
+            _close_triangle(w, lane, 0)
+            _get(w, lane, state)
+            copied = False
+            for e in range(SCAN_EVENTS):
+                old_f[e] = f[e, lane]
+                old_rate[e] = rate[e, lane]
+                f[e, lane], rate[e, lane] = _event(
+                    e,
+                    state[0], state[1], state[2], state[3], state[4], state[5],
+                    state[6], state[7], state[8], state[9], state[10], state[11],
+                )  # fmt: skip
+            for e in range(SCAN_EVENTS):
+                f0 = old_f[e]
+                f1 = f[e, lane]
+                if f0 == 0.0:
+                    continue
+                if (f0 < 0.0) == (f1 < 0.0) and not (
+                    f0 * old_rate[e] < 0.0 and f1 * rate[e, lane] > 0.0
+                ):
+                    continue
+                if not copied:
+                    for row in range(6):
+                        series[row, 0] = before[row, 0, lane]
+                        series[row, 1] = before[row, 1, lane]
+                        for k in range(2, TERMS):
+                            series[row, k] = w[row, k, lane]
+                    copied = True
+                found = _roots(series, e, h, f0, old_rate[e], f1, rate[e, lane], state, roots)
+                for r in range(found):
+                    t = now[lane] + roots[r]
+                    _, slope = _event_at(series, roots[r], e, state)
+                    if t > times[i] or (e == 4 and slope < 0.0):
+                        continue
+                    for view in (e, EVENTS):
+                        if view == EVENTS and e > 0:
+                            continue
+                        if counts[i] == capacity:
+                            status[i] = STATUS_BUDGET
+                            continue
+                        kind, r1, r2 = _kind_and_residuals(view, state)
+                        kinds[i, counts[i]] = kind
+                        when[i, counts[i]] = t
+                        first[i, counts[i]] = r1
+                        second[i, counts[i]] = r2
+                        counts[i] += 1
+            now[lane] += h
+            _get(w, lane, state)
+            done = now[lane] >= times[i] or status[i] == STATUS_BUDGET
+            for p in range(3):
+                if not state[2 * p] ** 2 + state[2 * p + 1] ** 2 >= nearest[i] ** 2:
+                    status[i] = STATUS_COLLISION
+                    done = True
+            if not done and _escapes(state):
+                status[i] = STATUS_ESCAPE
+                done = True
+            if not done and steps[i] >= max_steps:
+                status[i] = STATUS_BUDGET
+                done = True
+            if done:
+                x[i] = state
+                _park(w, lane, 0)
+                who[lane] = -1
+                running -= 1
+
+
+@_jit
+def _save(w):
+    """Copy of coefficients 0 and 1 of the six coordinates, shape (6, 2, LANES)."""
+    return w[:6, :2].copy()
+
+
+@_jit
+def track(w, x, time, nearest, times, series):
+    """Carry one state over a positive time and keep the series of every step.
+
+    Parameters
+    ----------
+    x : array, shape (12,)
+        Replaced by the last state.
+    times : array, shape (steps + 1,)
+        Filled with the ends of the steps.
+    series : array, shape (steps, 6, TERMS)
+        Filled with the coefficients of A, B, C at the beginning of each step.
+
+    Returns
+    -------
+    steps : int
+    status : int
+    """
+    for lane in range(LANES):
+        _park(w, lane, 0)
+        w[H, 0, lane] = 0.0
+    _put(w, 0, x)
+    times[0] = 0.0
+    lost = 0.0
+    n = 0
+    status = STATUS_BUDGET
+    while n < series.shape[0]:
+        _series(w)
+        series[n] = w[:6, :, 0]
+        h = _natural_step(w, 0)
+        left = (time - times[n]) + lost
+        last = not h < left
+        w[H, 0, 0] = left if last else h
+        _advance(w, 6)
+        _close_triangle(w, 0, 0)
+        _get(w, 0, x)
+        h = w[H, 0, 0] - lost
+        times[n + 1] = times[n] + h
+        lost = (times[n + 1] - times[n]) - h
+        n += 1
+        if last:
+            times[n] = time
+            status = STATUS_DONE
+        for p in range(3):
+            if not x[2 * p] ** 2 + x[2 * p + 1] ** 2 >= nearest**2:
+                status = STATUS_COLLISION
+        if last or status == STATUS_COLLISION:
+            break
+        if _escapes(x):
+            status = STATUS_ESCAPE
+            break
+    return n, status
+
+
+@_jit
+def dense(times, series, at, out):
+    """States at the times `at`, shape (k,), of a tracked arc, into out, shape (k, 12)."""
+    n = series.shape[0]
+    for i in range(at.shape[0]):
+        step = min(max(np.searchsorted(times, at[i], side="right") - 1, 0), n - 1)
+        _state_at(series[step], at[i] - times[step], out[i])
+
+
+@_jit
+def track_events(times, series, capacity):
+    """Every event of a tracked arc, all EVENTS functions, in the order of the steps.
+
+    A function that is zero up to rounding at the beginning of the arc has no event there.
+
+    Returns
+    -------
+    functions : integer array, shape (k,)
+        Number of the event function (see EVENTS).
+    when : array, shape (k,)
+    states : array, shape (k, 12)
+    rates : array, shape (k,)
+        Rate of the event function at its root; the sign gives the direction.
+    """
+    functions = np.zeros(capacity, np.int64)
+    when = np.zeros(capacity)
+    states = np.zeros((capacity, 12))
+    rates = np.zeros(capacity)
+    f = np.zeros((EVENTS, 2))
+    rate = np.zeros((EVENTS, 2))
+    state = np.zeros(12)
+    roots = np.zeros(2)
+    count = 0
+    for n in range(series.shape[0]):
+        h = times[n + 1] - times[n]
+        for e in range(EVENTS):
+            if n == 0:
+                f[e, 0], rate[e, 0] = _event_at(series[n], 0.0, e, state)
+                bound = 1e-12 * np.sum(state[:6] ** 2)
+                if e == 4:
+                    bound = 1e-12 * math.sqrt(np.sum(state[6:] ** 2)) / np.sum(state[:6] ** 2)
+                if e > 4:
+                    bound = 1e-12 * math.sqrt(np.sum(state[:6] ** 2))
+                if abs(f[e, 0]) <= bound:
+                    f[e, 0] = 0.0
+            f[e, 1], rate[e, 1] = _event_at(series[n], h, e, state)
+            found = _roots(series[n], e, h, f[e, 0], rate[e, 0], f[e, 1], rate[e, 1], state, roots)
+            for r in range(found):
+                if count < capacity:
+                    _, rates[count] = _event_at(series[n], roots[r], e, state)
+                    functions[count] = e
+                    when[count] = times[n] + roots[r]
+                    states[count] = state
+                    count += 1
+            f[e, 0] = f[e, 1]
+            rate[e, 0] = rate[e, 1]
+    return functions[:count], when[:count], states[:count], rates[:count]
+
+
+def is_cached():
+    """Whether compiled code of the scan is already on disk (a guess, for telling users to wait)."""
+    cache = getattr(getattr(scan, "_cache", None), "cache_path", None)
+    return cache is None or any(Path(cache).glob("_kernels.scan-*.nbi"))

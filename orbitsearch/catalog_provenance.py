@@ -1,0 +1,196 @@
+"""Where records come from: search runs, and rows of published tables."""
+
+import json
+from typing import Any
+
+from orbitsearch.catalog_file import CatalogFile
+from orbitsearch.catalog_rows import now, tool_version
+from orbitsearch.errors import BadRequest
+from orbitsearch.records import Run, Source
+
+__all__ = ["END_STATES", "Provenance"]
+
+END_STATES = ("finished", "stopped", "failed")
+"""How a run can end: by itself, because it was asked to, because of an error.  A run that was
+killed stays ``running``."""
+
+
+class Provenance(CatalogFile):
+    """The part of a catalogue that says where its records come from."""
+
+    def start_run(self, request: dict[str, Any]) -> int:
+        """Note that a search begins.
+
+        Parameters
+        ----------
+        request : dict
+            What is asked for, as JSON values.
+
+        Returns
+        -------
+        int
+            Number of the run, for `add` and `finish_run`.
+
+        Raises
+        ------
+        BadCatalog
+            When the catalogue cannot be written.
+        """
+        with self._writing() as connection:
+            cursor = connection.execute(
+                "INSERT INTO runs (started, tool_version, request, state) "
+                "VALUES (?, ?, ?, 'running')",
+                (now(), tool_version(), json.dumps(request)),
+            )
+            return int(cursor.lastrowid or 0)
+
+    def finish_run(self, id: int, counts: dict[str, Any], state: str = "finished") -> None:
+        """Note how a search ended.
+
+        Parameters
+        ----------
+        id : int
+            Number of the run.
+        counts : dict
+            What came of it, as JSON values.
+        state : str, optional
+            One of `END_STATES`.
+
+        Raises
+        ------
+        BadRequest
+            When there is no such run or state.
+        BadCatalog
+            When the catalogue cannot be written.
+        """
+        if state not in END_STATES:
+            raise BadRequest(
+                f"`state` must be one of {', '.join(END_STATES)}, got {state!r}: choose one"
+            )
+        with self._writing() as connection:
+            self._check_run(id, "id")
+            connection.execute(
+                "UPDATE runs SET finished = ?, counts = ?, state = ? WHERE id = ?",
+                (now(), json.dumps(counts), state, id),
+            )
+
+    def runs(self) -> list[Run]:
+        """All search runs, oldest first.
+
+        Returns
+        -------
+        list of Run
+        """
+        with self._reading() as connection:
+            rows = connection.execute(
+                "SELECT id, started, finished, tool_version, request, counts, state "
+                "FROM runs ORDER BY id"
+            ).fetchall()
+        return [
+            Run(
+                id=id,
+                started=started,
+                finished=finished,
+                tool_version=version,
+                request=json.loads(request),
+                counts=None if counts is None else json.loads(counts),
+                state=state,
+            )
+            for id, started, finished, version, request, counts, state in rows
+        ]
+
+    def add_source(
+        self,
+        orbit_id: int | None,
+        citation: str,
+        label: str,
+        kind: str,
+        p: str,
+        q: str,
+        period: str,
+        outcome: str,
+    ) -> int:
+        """File a row of a published table; filing it again changes nothing.
+
+        A row that could not be matched may be filed again with its record and new outcome.  A match
+        once made stays when a later attempt fails.
+
+        Parameters
+        ----------
+        orbit_id : int or None
+            The record it was matched to.
+        citation, label : str
+            Where it was published, and its name or number there.
+        kind, p, q, period : str
+            Start set, parameters and period as printed.
+        outcome : str
+            What refining it gave, in words.
+
+        Returns
+        -------
+        int
+            Number of the row.
+
+        Raises
+        ------
+        BadRequest
+            When there is no such record.
+        BadCatalog
+            When the catalogue cannot be written.
+        """
+        key = (citation, label, kind, p, q, period)
+        with self._writing() as connection:
+            if orbit_id is not None:
+                self._check_orbit(orbit_id, "orbit_id")
+            connection.execute(
+                "INSERT INTO sources (orbit_id, citation, label, kind, p, q, period, outcome) "
+                "VALUES (?, ?, ?, ?, ?, ?, ?, ?) "
+                "ON CONFLICT DO UPDATE SET orbit_id = excluded.orbit_id, "
+                "outcome = excluded.outcome "
+                "WHERE excluded.orbit_id IS NOT NULL OR sources.orbit_id IS NULL",
+                (orbit_id, *key, outcome),
+            )
+            # Not lastrowid: it means nothing when the row was there.
+            row = connection.execute(
+                "SELECT id FROM sources WHERE (citation, label, kind, p, q, period) "
+                "= (?, ?, ?, ?, ?, ?)",
+                key,
+            ).fetchone()
+            return int(row[0])
+
+    def sources(self, orbit_id: int | None) -> list[Source]:
+        """Published rows that were matched to a record.
+
+        Parameters
+        ----------
+        orbit_id : int or None
+            Number of the record; None for the rows that were matched to none.
+
+        Returns
+        -------
+        list of Source
+            In order of filing.
+        """
+        with self._reading() as connection:
+            rows = connection.execute(
+                "SELECT id, orbit_id, citation, label, kind, p, q, period, outcome "
+                "FROM sources WHERE orbit_id IS ? ORDER BY id",
+                (orbit_id,),
+            ).fetchall()
+        return [Source(*row) for row in rows]
+
+    def _check_run(self, id: int, name: str) -> None:
+        found = self._connection.execute("SELECT 1 FROM runs WHERE id = ?", (id,)).fetchone()
+        if found is None:
+            raise BadRequest(
+                f"`{name}` must name a run of this catalogue, got {id}: "
+                "list the runs for the others"
+            )
+
+    def _check_orbit(self, id: int, name: str) -> None:
+        found = self._connection.execute("SELECT 1 FROM orbits WHERE id = ?", (id,)).fetchone()
+        if found is None:
+            raise BadRequest(
+                f"`{name}` must name a record of this catalogue, got {id}: "
+                "list the catalogue for the others"
+            )

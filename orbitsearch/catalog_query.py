@@ -1,0 +1,147 @@
+"""The SQL with which records are read, and the way from a row back to a record.
+
+One page of records is one statement: starts and sources come along as JSON arrays, whose strings
+keep every digit.  Filtering and order are left to SQLite and its indices.
+"""
+
+import json
+from dataclasses import replace
+from typing import Any
+
+from orbitsearch.errors import BadRequest
+from orbitsearch.orbit import Orbit, Start, Status
+from orbitsearch.records import Record, Source
+from orbitsearch.words import canonical_word
+
+__all__ = ["PAGE", "RECORD_BY_ID", "page_query", "record_of_row"]
+
+PAGE = 500
+"""Records to a page: a few megabytes at most."""
+
+_COLUMNS = """
+    SELECT id, scaled_period, created, tool_version, run_id, note, record,
+        (SELECT json_group_array(json_array(id, is_primary, kind, p, q, period))
+            FROM starts WHERE orbit_id = orbits.id) AS starts,
+        (SELECT json_group_array(
+                json_array(id, orbit_id, citation, label, kind, p, q, period, outcome))
+            FROM sources WHERE orbit_id = orbits.id) AS sources
+    FROM orbits
+"""
+
+RECORD_BY_ID = _COLUMNS + " WHERE id = ?"
+"""Statement that reads the record of one id."""
+
+
+def page_query(
+    start: str | None = None,
+    stable: bool | None = None,
+    max_scaled_period: float | None = None,
+    word: str | None = None,
+    choreography: bool | None = None,
+    status: Status | str | None = None,
+) -> tuple[str, list[Any]]:
+    """Statement for one page of the records that meet every condition, in order of T*, then id.
+
+    Parameters
+    ----------
+    start : str, optional
+        Name of a start set that the orbit has a start in.
+    stable : bool, optional
+        Whether the orbit is linearly stable.
+    max_scaled_period : float, optional
+        Largest T*.
+    word : str, optional
+        Free-group word, in any form that `canonical_word` makes equal.
+    choreography : bool, optional
+        Whether the three bodies share one curve.
+    status : Status or str, optional
+        ``verified`` or ``not confirmed``.
+
+    Returns
+    -------
+    statement : str
+        Its last three places are T* and id of the record before the page, and the page's length.
+    values : list
+        For all places before those.
+
+    Raises
+    ------
+    BadRequest
+        For a bad letter in `word`, a `max_scaled_period` that is not positive, an unknown `status`.
+    """
+    conditions: list[str] = []
+    values: list[Any] = []
+    if max_scaled_period is not None:
+        if not max_scaled_period > 0:
+            raise BadRequest(
+                f"`max_scaled_period` must be positive, got {max_scaled_period}: "
+                "the figure-eight has 9.24, for instance"
+            )
+        conditions.append("scaled_period <= ?")
+        values.append(max_scaled_period)
+    if word is not None:
+        conditions.append("word = ?")
+        values.append(canonical_word(word))
+    if stable is not None:
+        conditions.append("linearly_stable = ?")
+        values.append(int(stable))
+    if choreography is not None:
+        conditions.append("choreography = ?")
+        values.append(int(choreography))
+    if status is not None:
+        conditions.append("status = ?")
+        values.append(_known_status(status))
+    if start is not None:
+        # The unary plus keeps the planner on the order it is asked for, instead of sorting.
+        conditions.append(
+            "EXISTS (SELECT 1 FROM starts WHERE starts.orbit_id = orbits.id AND +kind = ?)"
+        )
+        values.append(start)
+    # Pages, not one long cursor: an open cursor would pin an old state of the file, and whoever
+    # adds an orbit while listing would be refused as soon as a second process has written.
+    conditions.append("(scaled_period, id) > (?, ?)")
+    where = " AND ".join(conditions)
+    return f"{_COLUMNS} WHERE {where} ORDER BY scaled_period, id LIMIT ?", values
+
+
+def _known_status(status: Status | str) -> str:
+    """Text of a status that a record can have."""
+    known = (Status.VERIFIED, Status.NOT_CONFIRMED)
+    if status not in known:
+        raise BadRequest(
+            f"`status` must be 'verified' or 'not confirmed', got {str(status)!r}: "
+            "other outcomes are not catalogued"
+        )
+    return str(Status(status))
+
+
+def record_of_row(row: tuple[Any, ...]) -> Record:
+    """Record of one row of these statements.
+
+    Parameters
+    ----------
+    row : tuple
+        As selected.
+
+    Returns
+    -------
+    Record
+        Its starts have the digits they were filed with.
+    """
+    id_, _, created, tool_version, run_id, note, record, starts, sources = row
+    # Aggregates promise no order; the ids in front restore that of filing.
+    rows = sorted(json.loads(starts))
+    orbit = Orbit.from_json(json.loads(record)).with_starts(
+        tuple(Start(kind, (p, q), period) for _, _, kind, p, q, period in rows)
+    )
+    primary = next(index for index, start in enumerate(rows) if start[1])
+    return Record(
+        id=id_,
+        # The JSON has the period as a double; the table has all of its digits.
+        orbit=replace(orbit, start=orbit.starts[primary]),
+        created=created,
+        tool_version=tool_version,
+        run_id=run_id,
+        note=note,
+        sources=tuple(Source(*source) for source in sorted(json.loads(sources))),
+    )

@@ -1,0 +1,326 @@
+"""The commands: each takes the parsed options and returns an exit code.
+
+The solver is imported inside the commands that use it, so that listing costs no compiler.
+"""
+
+from __future__ import annotations
+
+import signal
+import sys
+from argparse import Namespace
+from collections.abc import Iterable
+from contextlib import closing
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from tqdm import tqdm
+
+from orbitsearch import tables
+from orbitsearch.catalog import Catalog
+from orbitsearch.cli import report
+from orbitsearch.errors import BadRequest, OrbitsearchError
+from orbitsearch.orbit import Orbit, Status
+
+if TYPE_CHECKING:
+    from orbitsearch.search import SearchRequest
+
+__all__ = [
+    "export",
+    "import_table",
+    "list_orbits",
+    "refine",
+    "runs",
+    "search",
+    "show",
+    "starts",
+    "verify",
+]
+
+DONE, NO, STOPPED = 0, 1, 130
+
+
+def _request(options: Namespace) -> SearchRequest:
+    from orbitsearch.search import SearchRequest
+    from orbitsearch.starts import start_set
+
+    if len(options.grid) > 2:
+        raise BadRequest(f"`grid` takes one number or two: {' '.join(map(str, options.grid))}")
+    grid = (options.grid[0], options.grid[-1])
+    window = tuple(options.window) if options.window else start_set(options.start).window
+    return SearchRequest(options.start, window, grid, options.scaled_period)
+
+
+def search(options: Namespace) -> int:
+    """Search a window, file what is found, print counts and a table."""
+    from orbitsearch.runs import Filed, Known, run_search
+    from orbitsearch.search import Finished, TileDone, check_workers
+
+    request = _request(options)
+    workers = check_workers(options.workers)
+    new, known, counts = {}, set(), {}
+    state = "finished"
+    # A batch system that ends a job asks first; what it asks for is what Ctrl-C asks for.
+    signal.signal(signal.SIGTERM, signal.default_int_handler)
+    with Catalog.open(options.catalog) as catalog:
+        # `disable=None`: no bar where standard error is not a terminal.
+        bar = tqdm(total=request.tiles, unit="tile", file=sys.stderr, disable=None)
+        bar.set_description("compiling, the first time" if _is_cold() else "searching")
+        try:
+            with closing(run_search(catalog, request, workers=workers)) as events:
+                for event in events:
+                    if isinstance(event, TileDone):
+                        bar.set_description("searching")
+                        bar.update()
+                    elif isinstance(event, Filed):
+                        if event.new:
+                            new[event.id] = event.orbit
+                        elif event.id not in new:
+                            known.add(event.id)
+                    elif isinstance(event, Known):
+                        known.add(event.id)
+                    elif isinstance(event, Finished):
+                        counts = dict(event.counts)
+                    bar.set_postfix(new=len(new), known=len(known), refresh=False)
+        except KeyboardInterrupt:
+            state = "stopped"
+        bar.close()
+        if state == "stopped":
+            counts = catalog.runs()[-1].counts or {}
+        records = sorted(
+            (catalog.get(id) for id in new), key=lambda record: record.orbit.scaled_period
+        )
+        run = catalog.runs()[-1].id
+    if options.json:
+        report.say_json(
+            {
+                "run": run, "state": state, "request": request.to_json(), "counts": counts,
+                "new": sorted(new), "known": sorted(known),
+            }
+        )  # fmt: skip
+    else:
+        report.say(report.counts_text(counts))
+        if records:
+            report.say("\n" + tables.to_text(records))
+        report.say(
+            f"\n{len(new)} new, {len(known)} known orbits; catalogue {options.catalog}, run {run}"
+        )
+    if state == "stopped":
+        report.complain(
+            f"stopped; the {len(new)} orbits found so far are kept in {options.catalog}"
+        )
+        return STOPPED
+    return DONE
+
+
+def _is_cold() -> bool:
+    """Whether the kernels still have to be compiled on this machine."""
+    from orbitsearch.flow import is_compiled
+
+    return not is_compiled()
+
+
+def refine(options: Namespace) -> int:
+    """Refine a guess; file it on request."""
+    from orbitsearch.refine import refine as refine_guess
+
+    answer = refine_guess(options.start, options.at[0], options.at[1], options.period)
+    kept = None
+    orbit = answer.orbit
+    if options.keep and orbit is not None and orbit.status is not Status.REJECTED:
+        with Catalog.open(options.catalog) as catalog:
+            kept = catalog.add(orbit)
+    if options.json:
+        solution = {"status": str(answer.solution.status), "reason": answer.solution.reason}
+        value: dict[str, Any] = {"status": str(answer.status), "solution": solution}
+        if orbit is not None:
+            value = orbit.to_json()
+        value |= {"message": answer.message, "elsewhere": answer.elsewhere}
+        if kept is not None:
+            value |= {"id": kept.id, "new": kept.new}
+        report.say_json(value)
+    else:
+        if orbit is not None:
+            report.say(report.orbit_text(orbit))
+        report.say(answer.message)
+        if kept is not None:
+            report.say(f"{'filed as' if kept.new else 'already filed as'} orbit {kept.id}")
+    return DONE if answer.status in (Status.VERIFIED, Status.NOT_CONFIRMED) else NO
+
+
+def verify(options: Namespace) -> int:
+    """Verify a filed orbit, or numbers as they are given."""
+    from orbitsearch.refine import verify_as_given
+
+    guess = (options.start, options.at, options.period)
+    if (options.id is None) == all(part is None for part in guess):
+        raise BadRequest("`verify` takes a number ID, or `--start`, `--at` and `--period`")
+    if options.id is None:
+        if None in guess:
+            raise BadRequest("`verify` needs all of `--start`, `--at` and `--period`")
+        found = verify_as_given(options.start, options.at[0], options.at[1], options.period)
+    else:
+        with Catalog.open(options.catalog, create=False) as catalog:
+            start = catalog.get(options.id).orbit.start
+        found = verify_as_given(start.kind, start.p, start.q, float(start.period))
+    if isinstance(found, Orbit):
+        value, text, status = found.to_json(), report.orbit_text(found), found.status
+    else:
+        value = {"status": str(found.status), "reason": found.reason}
+        text, status = report.verdict_text(found), found.status
+    if options.json:
+        report.say_json(value if options.id is None else {"id": options.id, **value})
+    else:
+        report.say(text)
+    return DONE if status is Status.VERIFIED else NO
+
+
+def list_orbits(options: Namespace) -> int:
+    """List filed orbits that meet the options."""
+    if options.start is not None:
+        from orbitsearch.starts import start_set
+
+        start_set(options.start)
+    with Catalog.open(options.catalog, create=False) as catalog:
+        records = catalog.orbits(
+            start=options.start,
+            stable=True if options.stable else None,
+            max_scaled_period=options.max_scaled_period,
+            word=options.word,
+        )
+        report.say(tables.to_json(records) if options.json else tables.to_text(records))
+    return DONE
+
+
+def show(options: Namespace) -> int:
+    """Show one filed orbit."""
+    with Catalog.open(options.catalog, create=False) as catalog:
+        record = catalog.get(options.id)
+    if options.json:
+        report.say(tables.to_json([record])[1:-1].strip())
+    else:
+        report.say(report.record_text(record))
+    return DONE
+
+
+def export(options: Namespace) -> int:
+    """Write the whole catalogue as a table."""
+    write: dict[str, Any] = {
+        "csv": tables.to_csv,
+        "json": tables.to_json,
+        "latex": tables.to_latex,
+    }
+    with Catalog.open(options.catalog, create=False) as catalog:
+        records = [*catalog.orbits()]
+    text = write[options.format](records)
+    if options.output is not None:
+        _write(options.output, text)
+    if options.json:
+        path = None if options.output is None else str(options.output)
+        value = {"format": options.format, "orbits": len(records), "output": path}
+        report.say_json(value if options.output is not None else {**value, "text": text})
+    elif options.output is None:
+        report.say(text.rstrip("\n"))
+    else:
+        report.say(f"{len(records)} orbits written to {options.output}")
+    return DONE
+
+
+def _write(path: Path, text: str) -> None:
+    try:
+        path.write_text(text if text.endswith("\n") else f"{text}\n", encoding="utf-8")
+    except OSError as problem:
+        reason = problem.strerror or str(problem)
+        raise OrbitsearchError(
+            f"`output` must be a file that can be written: {path}: {reason}; name another"
+        ) from None
+
+
+def import_table(options: Namespace) -> int:
+    """Refine and file the rows of a published table."""
+    from orbitsearch.runs import ImportedRow, import_rows
+
+    if not options.source.strip():
+        raise BadRequest("`source` must not be empty; name the publication of the table")
+    rows = tables.read_starts_csv(options.file)
+    done: Iterable[ImportedRow]
+    results = []
+    with Catalog.open(options.catalog) as catalog:
+        done = import_rows(catalog, rows, options.source)
+        for one in tqdm(done, total=len(rows), unit="row", file=sys.stderr, disable=None):
+            results.append(one)
+            if not options.json:
+                report.say(_row_text(one))
+    failed = sum(one.id is None for one in results)
+    if options.json:
+        report.say_json(
+            [
+                {
+                    "line": one.row.line, "label": one.row.label, "start": one.row.start,
+                    "parameters": [one.row.p, one.row.q], "period": one.row.period,
+                    "status": str(one.status), "id": one.id, "new": one.new,
+                    "message": one.message,
+                }
+                for one in results
+            ]
+        )  # fmt: skip
+    else:
+        report.say(
+            f"{len(results) - failed} rows filed ({sum(one.new for one in results)} new orbits),"
+            f" {failed} failed"
+        )
+    return NO if failed else DONE
+
+
+def _row_text(one: Any) -> str:
+    name = one.row.label or f"{one.row.start} {one.row.p} {one.row.q}"
+    where = "failed" if one.id is None else f"orbit {one.id}{' (new)' if one.new else ''}"
+    return f"line {one.row.line}, {name}: {where}: {one.message}"
+
+
+def runs(options: Namespace) -> int:
+    """List the searches filed in the catalogue."""
+    with Catalog.open(options.catalog, create=False) as catalog:
+        found = catalog.runs()
+    if options.json:
+        report.say_json(
+            [
+                {
+                    "id": run.id, "state": run.state, "started": run.started,
+                    "finished": run.finished, "tool_version": run.tool_version,
+                    "request": run.request, "counts": run.counts,
+                }
+                for run in found
+            ]
+        )  # fmt: skip
+    else:
+        for run in found:
+            ask, got = run.request, run.counts or {}
+            report.say(
+                f"run {run.id} {run.state} {run.started}: {ask['start']} {ask['window']},"
+                f" grid {ask['grid']}, T* < {ask['scaled_period']:g}; {got.get('filed', 0)} new"
+            )
+    return DONE
+
+
+def starts(options: Namespace) -> int:
+    """Describe the start sets."""
+    from inspect import getdoc, getmodule
+
+    from orbitsearch.starts import START_SETS
+
+    described: dict[str, dict[str, Any]] = {
+        name: {
+            "parameters": [*one.letters],
+            "window": [*one.window],
+            "description": " ".join((getdoc(getmodule(type(one))) or "").split()),
+        }
+        for name, one in START_SETS.items()
+    }
+    if options.json:
+        report.say_json(described)
+    else:
+        for name, one in described.items():
+            window = " ".join(f"{value:g}" for value in one["window"])
+            report.say(f"{name}  ({', '.join(one['parameters'])}), default window {window}")
+            report.say(f"  {one['description']}\n")
+    return DONE

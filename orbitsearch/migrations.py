@@ -1,0 +1,154 @@
+"""Steps that take a catalogue file from one schema version to the next.
+
+Each step is a plain function of a connection.  It runs inside one transaction together with the new
+version number, so a file is never between two versions, whatever kills the process.  Steps are only
+ever added at the end: one that has shipped is never edited, since files made by it exist.
+"""
+
+import sqlite3
+from collections.abc import Callable
+
+__all__ = ["APPLICATION_ID", "STEPS", "migrate", "read_version"]
+
+APPLICATION_ID = 0x6F726273
+"""Number in the header by which an SQLite file is known as ours (ASCII for "orbs")."""
+
+
+def step_1(connection: sqlite3.Connection) -> None:
+    """Create runs, orbits, their starts, and published rows as sources.
+
+    `orbits` repeats what one filters and sorts by as columns and keeps everything else in
+    `record`, the JSON text of the orbit, last, so that browsing does not read it.  Digits live as
+    decimal text in `starts`; the doubles beside them only serve to look starts up.
+
+    Parameters
+    ----------
+    connection : sqlite3.Connection
+        Inside a transaction; the file has no tables.
+    """
+    # One by one: executescript would commit the transaction first.
+    for statement in (
+        """
+        CREATE TABLE runs (
+            id INTEGER PRIMARY KEY,
+            started TEXT NOT NULL,
+            finished TEXT,
+            tool_version TEXT NOT NULL,
+            request TEXT NOT NULL,
+            counts TEXT,
+            state TEXT NOT NULL
+        )
+        """,
+        """
+        CREATE TABLE orbits (
+            id INTEGER PRIMARY KEY,
+            start TEXT NOT NULL,
+            period REAL NOT NULL,
+            scaled_period REAL NOT NULL,
+            rotation REAL NOT NULL,
+            choreography INTEGER NOT NULL,
+            stability_kind TEXT NOT NULL,
+            linearly_stable INTEGER NOT NULL,
+            status TEXT NOT NULL,
+            word_length INTEGER NOT NULL,
+            created TEXT NOT NULL,
+            tool_version TEXT NOT NULL,
+            run_id INTEGER REFERENCES runs (id),
+            note TEXT NOT NULL DEFAULT '',
+            word TEXT NOT NULL,
+            cycle TEXT NOT NULL,
+            record TEXT NOT NULL
+        )
+        """,
+        "CREATE INDEX orbits_by_period ON orbits (scaled_period)",
+        "CREATE INDEX orbits_by_word ON orbits (word, scaled_period)",
+        "CREATE INDEX orbits_by_cycle ON orbits (cycle, scaled_period)",
+        """
+        CREATE TABLE starts (
+            id INTEGER PRIMARY KEY,
+            orbit_id INTEGER NOT NULL REFERENCES orbits (id) ON DELETE CASCADE,
+            kind TEXT NOT NULL,
+            p TEXT NOT NULL,
+            q TEXT NOT NULL,
+            period TEXT NOT NULL,
+            p_real REAL NOT NULL,
+            q_real REAL NOT NULL,
+            period_real REAL NOT NULL,
+            is_primary INTEGER NOT NULL,
+            UNIQUE (orbit_id, kind, p, q)
+        )
+        """,
+        "CREATE INDEX starts_by_place ON starts (kind, p_real, q_real)",
+        """
+        CREATE TABLE sources (
+            id INTEGER PRIMARY KEY,
+            orbit_id INTEGER REFERENCES orbits (id) ON DELETE SET NULL,
+            citation TEXT NOT NULL,
+            label TEXT NOT NULL,
+            kind TEXT NOT NULL,
+            p TEXT NOT NULL,
+            q TEXT NOT NULL,
+            period TEXT NOT NULL,
+            outcome TEXT NOT NULL,
+            UNIQUE (citation, label, kind, p, q, period)
+        )
+        """,
+        "CREATE INDEX sources_by_orbit ON sources (orbit_id)",
+    ):
+        connection.execute(statement)
+
+
+STEPS: tuple[Callable[[sqlite3.Connection], None], ...] = (step_1,)
+"""The step at index n takes version n to n + 1; their number is the current version."""
+
+
+def read_version(connection: sqlite3.Connection) -> int:
+    """Schema version of a file, 0 for an empty one.
+
+    Parameters
+    ----------
+    connection : sqlite3.Connection
+
+    Returns
+    -------
+    int
+    """
+    return int(connection.execute("PRAGMA user_version").fetchone()[0])
+
+
+def migrate(connection: sqlite3.Connection) -> int:
+    """Bring a file to the current version, one committed step at a time.
+
+    Parameters
+    ----------
+    connection : sqlite3.Connection
+        Writable, in autocommit mode, outside of a transaction.
+
+    Returns
+    -------
+    int
+        How many steps this call made; another process may have made the others meanwhile.
+
+    Raises
+    ------
+    sqlite3.Error
+        When a step fails; the file stays at the version before it.
+    """
+    made = 0
+    while True:
+        connection.execute("BEGIN IMMEDIATE")
+        try:
+            # Read under the lock: another process may have migrated while we waited for it.
+            version = read_version(connection)
+            if version >= len(STEPS):
+                connection.execute("ROLLBACK")
+                return made
+            STEPS[version](connection)
+            connection.execute(f"PRAGMA application_id = {APPLICATION_ID}")
+            connection.execute(f"PRAGMA user_version = {version + 1}")
+            connection.execute("COMMIT")
+            made += 1
+        except BaseException:
+            if connection.in_transaction:
+                connection.execute("ROLLBACK")
+            raise

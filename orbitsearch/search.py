@@ -1,0 +1,400 @@
+"""The search: a window of starts in, a stream of findings out.
+
+The grid is cut into tiles.  A worker scans a tile, finds its candidates and refines them; new arcs
+are completed and verified by workers too; this process only recognises repetitions and keeps
+order.  Findings come as an iterator of events, so a command, a notebook or a script can show
+progress, file what is found, and stop at any event without losing anything.
+
+Results do not depend on the number of workers: tiles and orbits are taken in order, whoever
+finishes first.
+"""
+
+from __future__ import annotations
+
+import math
+import multiprocessing
+import os
+import signal
+import threading
+from collections import Counter, deque
+from collections.abc import Callable, Generator, Iterator
+from concurrent.futures import Executor, Future, ProcessPoolExecutor
+from concurrent.futures.process import BrokenProcessPool
+from contextlib import contextmanager
+from dataclasses import asdict, dataclass, field
+from typing import Any
+
+import numpy as np
+
+from orbitsearch import flow
+from orbitsearch.errors import BadRequest, OrbitsearchError
+from orbitsearch.orbit import Orbit, Start, Status, Verdict
+from orbitsearch.refine import Arc, complete, make_arc
+from orbitsearch.scan import candidates, scan
+from orbitsearch.shoot import shoot
+from orbitsearch.starts import CONDITIONS, StartSet, start_set
+
+__all__ = [
+    "Candidate",
+    "Event",
+    "Finished",
+    "Found",
+    "Rejected",
+    "SearchRequest",
+    "TileDone",
+    "search",
+]
+
+# Cells along the side of a tile: enough candidates to keep all lanes busy, small enough to report
+# progress and to stop within a second.
+TILE = 25
+# A guess may move this many cells; farther away another triangle has found the same orbit.
+REACH_CELLS = 8.0
+# Two refined starts closer than this are one (a start is refined to 1e-10 or better).
+SAME_START = 1e-7
+LARGEST_GRID = 50_000_000
+
+
+@dataclass(frozen=True)
+class SearchRequest:
+    """What to search.
+
+    Attributes
+    ----------
+    start : str
+        Name of the start set.
+    window : tuple of float
+        (p0, p1, q0, q1), the ranges of its two parameters.
+    grid : tuple of int
+        Number of starts along each parameter.
+    scaled_period : float
+        Bound on T* = T |E|^(3/2) of the orbits looked for; arcs reach half of it.
+
+    Raises
+    ------
+    BadRequest
+        When a rule is broken; see the messages.
+    """
+
+    start: str
+    window: tuple[float, float, float, float]
+    grid: tuple[int, int]
+    scaled_period: float
+
+    def __post_init__(self) -> None:
+        starts = start_set(self.start)
+        p0, p1, q0, q1 = self.window
+        if not all(math.isfinite(value) for value in self.window):
+            raise BadRequest(f"`window` must hold finite numbers: {_numbers(self.window)}")
+        for letter, low, high in zip(starts.letters, (p0, q0), (p1, q1), strict=True):
+            if not low < high:
+                raise BadRequest(
+                    f"`window` must go from low to high in {letter}: {low:g} to {high:g};"
+                    " exchange the two numbers"
+                )
+        if min(self.grid) < 2:
+            raise BadRequest(f"`grid` must be at least 2 each way: {self.grid[0]} x {self.grid[1]}")
+        if self.grid[0] * self.grid[1] > LARGEST_GRID:
+            raise BadRequest(
+                f"`grid` must not pass {LARGEST_GRID:,} starts: {self.grid[0]} x {self.grid[1]};"
+                " search the window in parts"
+            )
+        if not (math.isfinite(self.scaled_period) and 0 < self.scaled_period <= 1000):
+            raise BadRequest(
+                f"`scaled-period` must be above 0 and at most 1000: {self.scaled_period:g}"
+            )
+        if not self._has_bound_starts(starts):
+            raise BadRequest(
+                f"`window` must hold bound starts (E < 0) of the {self.start} set:"
+                f" {_numbers(self.window)}; try {_numbers(starts.window)}"
+            )
+
+    def _has_bound_starts(self, starts: StartSet) -> bool:
+        # A coarse look first, so that a huge grid is not built to learn what a small one tells.
+        for n in {min(64, self.grid[0]), self.grid[0]} if max(self.grid) <= 4096 else {512}:
+            m = min(self.grid[1], max(n, 64))
+            p, q = np.meshgrid(
+                np.linspace(*self.window[:2], n), np.linspace(*self.window[2:], m), indexing="ij"
+            )
+            with np.errstate(all="ignore"):
+                bound = starts.inside(p.ravel(), q.ravel())
+                bound &= starts.energies(p.ravel(), q.ravel()) < 0
+            if bound.any():
+                return True
+        return False
+
+    @property
+    def tiles(self) -> int:
+        """Number of tiles."""
+        return len(_blocks(self.grid[0])) * len(_blocks(self.grid[1]))
+
+    def to_json(self) -> dict[str, Any]:
+        """Plain JSON value."""
+        return asdict(self)
+
+
+@dataclass(frozen=True)
+class TileDone:
+    """A tile was scanned and its candidates were worked off; counts are those of the tile."""
+
+    tile: int
+    tiles: int
+    counts: Counter[str]
+
+
+@dataclass(frozen=True)
+class Candidate:
+    """A converged start that is not known yet and goes on to verification."""
+
+    start: Start
+    condition: str
+
+
+@dataclass(frozen=True)
+class Found:
+    """A periodic orbit, verified or marked as not confirmed."""
+
+    orbit: Orbit
+
+
+@dataclass(frozen=True)
+class Rejected:
+    """A converged start that failed verification."""
+
+    start: Start
+    verdict: Verdict
+
+
+@dataclass(frozen=True)
+class Finished:
+    """The whole window is done; counts of the whole search."""
+
+    counts: Counter[str]
+
+
+Event = TileDone | Candidate | Found | Rejected | Finished
+
+
+@dataclass(frozen=True)
+class _Tile:
+    counts: Counter[str]
+    arcs: list[Arc] = field(default_factory=list)
+
+
+def _numbers(values: tuple[float, ...]) -> str:
+    return " ".join(f"{value:g}" for value in values)
+
+
+def _blocks(n: int) -> list[tuple[int, int]]:
+    """First and last index of the blocks of at most TILE cells along n starts."""
+    count = math.ceil((n - 1) / TILE)
+    edges = np.linspace(0, n - 1, count + 1).round().astype(int)
+    return list(zip(edges[:-1].tolist(), edges[1:].tolist(), strict=True))
+
+
+def _scan_tile(request: SearchRequest, tile: int) -> _Tile:
+    """Work of one tile: scan, candidates, Newton, and one arc for each distinct start."""
+    starts = start_set(request.start)
+    rows, columns = _blocks(request.grid[0]), _blocks(request.grid[1])
+    i, j = divmod(tile, len(columns))
+    p = np.linspace(*request.window[:2], request.grid[0])
+    q = np.linspace(*request.window[2:], request.grid[1])
+    # Neighbouring tiles share the starts of their common edge.
+    mine_p = p[rows[i][0] : rows[i][1] + 1]
+    mine_q = q[columns[j][0] : columns[j][1] + 1]
+    seen = scan(starts, mine_p, mine_q, request.scaled_period)
+    found = candidates(starts, seen, request.scaled_period)
+    cell = max(p[1] - p[0], q[1] - q[0])
+    shots = shoot(starts, found.kind, found.p, found.q, found.time, reach=REACH_CELLS * cell)
+    counts: Counter[str] = Counter(
+        starts=int(seen.valid.sum()),
+        skipped=int((~seen.valid).sum()),
+        steps=seen.steps,
+        candidates=len(found),
+        newton_iterations=int(shots.iterations.sum()),
+        newton_steps=int(shots.steps.sum()),
+    )
+    for code, status in flow.STATUS.items():
+        if status is not Status.CONVERGED:
+            counts[f"starts ended by {status}"] += int((seen.status == code).sum())
+    arcs: list[Arc] = []
+    for k, status in enumerate(shots.status):
+        counts[f"candidates {status}"] += 1
+        if status is not Status.CONVERGED:
+            continue
+        arc = make_arc(shots, k, int(found.kind[k]))
+        energy = float(starts.energies(shots.p[k : k + 1], shots.q[k : k + 1])[0])
+        if arc.period(starts) * abs(energy) ** 1.5 > request.scaled_period:
+            counts["beyond the scaled period"] += 1
+        elif any(_close(arc, other) for other in arcs):
+            counts["repeated"] += 1
+        else:
+            arcs.append(arc)
+    return _Tile(counts, arcs)
+
+
+def _close(one: Arc, other: Arc) -> bool:
+    return max(abs(one.p - other.p), abs(one.q - other.q)) < SAME_START
+
+
+def _complete(start: str, arc: Arc) -> Orbit | Verdict:
+    return complete(start_set(start), arc)
+
+
+def _start_worker() -> None:
+    # Ctrl-C goes to every process of the terminal; the parent alone decides what it means.
+    signal.signal(signal.SIGINT, signal.SIG_IGN)
+    threading.Thread(target=_end_with_parent, daemon=True).start()
+
+
+def _end_with_parent() -> None:
+    # A killed parent cannot tell its workers, and they hold both ends of the pipe they wait on.
+    parent = multiprocessing.parent_process()
+    if parent is not None:
+        parent.join()
+    os._exit(1)
+
+
+class _Inline(Executor):
+    """Executor that runs a task when it is submitted: no processes, for one worker."""
+
+    def submit(self, fn: Callable[..., Any], /, *args: Any, **kwargs: Any) -> Future[Any]:
+        """Run the task at once."""
+        future: Future[Any] = Future()
+        future.set_result(fn(*args, **kwargs))
+        return future
+
+
+@contextmanager
+def _pool(workers: int) -> Iterator[Executor]:
+    if workers == 1:
+        yield _Inline()
+        return
+    # Spawned, not forked: the same on every system, and safe beside threads of a notebook.
+    pool = ProcessPoolExecutor(
+        workers, multiprocessing.get_context("spawn"), initializer=_start_worker
+    )
+    try:
+        yield pool
+    finally:
+        pool.shutdown(wait=True, cancel_futures=True)
+
+
+def _result(future: Future[Any]) -> Any:
+    try:
+        return future.result()
+    except BrokenProcessPool:
+        raise OrbitsearchError(
+            "a worker process died (out of memory?); what was found so far is kept: run the search"
+            " again, with fewer `--workers` or a smaller `--grid`"
+        ) from None
+
+
+def check_workers(workers: int | None) -> int:
+    """Number of worker processes: as given, or the cores this process may use."""
+    if workers is None:
+        usable = getattr(os, "sched_getaffinity", None)
+        return len(usable(0)) if usable else os.cpu_count() or 1
+    if workers < 1:
+        raise BadRequest(f"`workers` must be at least 1: {workers}")
+    return workers
+
+
+class _Search:
+    """State of one running search: what is known, what is under way, what was counted."""
+
+    def __init__(
+        self, request: SearchRequest, known: Callable[[Start], bool], pool: Executor
+    ) -> None:
+        self.request = request
+        self.starts = start_set(request.start)
+        self.known = known
+        self.pool = pool
+        self.counts: Counter[str] = Counter()
+        self.seen: list[tuple[float, float]] = []
+        self.under_way: deque[tuple[Start, Future[Orbit | Verdict]]] = deque()
+
+    def _is_new(self, arc: Arc) -> bool:
+        """Whether no such start was met in this run or is in the catalogue."""
+        if self.seen:
+            near = np.abs(np.array(self.seen) - (arc.p, arc.q)).max(axis=1)
+            if near.min() < SAME_START:
+                self.counts["repeated"] += 1
+                return False
+        self.seen.append((arc.p, arc.q))
+        if self.known(self._start(arc)):
+            self.counts["known"] += 1
+            return False
+        return True
+
+    def _start(self, arc: Arc) -> Start:
+        return Start.from_floats(self.request.start, arc.p, arc.q, arc.period(self.starts))
+
+    def take_tile(self, tile: int, result: _Tile) -> Iterator[Event]:
+        """Count a tile, send its new arcs on to verification."""
+        self.counts += result.counts
+        for arc in result.arcs:
+            if self._is_new(arc):
+                start = self._start(arc)
+                yield Candidate(start, CONDITIONS[arc.kind].label)
+                self.under_way.append((start, self.pool.submit(_complete, self.request.start, arc)))
+        yield TileDone(tile, self.request.tiles, result.counts)
+
+    def take_orbits(self, wait: bool) -> Iterator[Event]:
+        """Verified orbits in the order they were sent, those that are ready or all."""
+        while self.under_way and (wait or self.under_way[0][1].done()):
+            start, future = self.under_way.popleft()
+            outcome = _result(future)
+            verdict = outcome if isinstance(outcome, Verdict) else outcome.verdict
+            if isinstance(outcome, Verdict) or verdict.status is Status.REJECTED:
+                self.counts["rejected"] += 1
+                self.counts[f"rejected: {verdict.reason.split(' is ')[0]}"] += 1
+                yield Rejected(start, verdict)
+                continue
+            if outcome.scaled_period > self.request.scaled_period:
+                self.counts["beyond the scaled period"] += 1
+                continue
+            self.seen += [(s.p, s.q) for s in outcome.starts if s.kind == self.request.start]
+            self.counts[str(verdict.status)] += 1
+            yield Found(outcome)
+
+
+def search(
+    request: SearchRequest,
+    *,
+    known: Callable[[Start], bool] = lambda _: False,
+    workers: int | None = None,
+) -> Generator[Event, None, None]:
+    """Search a window for periodic orbits.
+
+    Parameters
+    ----------
+    request : SearchRequest
+    known : callable
+        Told a converged start; True leaves it out as known.  It is asked after the events before
+        it were consumed, so it may look at what those were filed as.
+    workers : int, optional
+        Worker processes; by default one for each core.  1 works in this process.
+
+    Yields
+    ------
+    TileDone, Candidate, Found, Rejected
+        As they happen, tiles in order; closing the iterator stops the workers.
+    Finished
+        Last, with the counts of everything.
+    """
+    workers = check_workers(workers)
+    with _pool(workers) as pool:
+        run = _Search(request, known, pool)
+        pending: deque[tuple[int, Future[_Tile]]] = deque()
+        following = 0
+        while following < request.tiles or pending:
+            # A few tiles ahead keep every worker busy without letting verification starve.
+            while following < request.tiles and len(pending) < 2 * workers:
+                pending.append((following, pool.submit(_scan_tile, request, following)))
+                following += 1
+            tile, future = pending.popleft()
+            yield from run.take_tile(tile, _result(future))
+            yield from run.take_orbits(wait=False)
+        yield from run.take_orbits(wait=True)
+    yield Finished(run.counts)

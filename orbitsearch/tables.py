@@ -1,0 +1,220 @@
+"""Catalogue records as CSV, JSON, LaTeX or terminal text.
+
+CSV and JSON keep every digit and every column; LaTeX keeps the digits of starts and periods and
+leaves out what a printed table has no room for; terminal text is rounded.  What `to_csv` writes,
+`read_starts_csv` reads.
+"""
+
+import csv
+import io
+import json
+import math
+from collections.abc import Callable, Iterable
+from typing import Any
+
+from tabulate import tabulate
+
+from orbitsearch.orbit import Orbit
+from orbitsearch.records import Record
+from orbitsearch.starts_table import RowOfStarts, read_starts_csv
+
+__all__ = [
+    "COLUMNS",
+    "RowOfStarts",
+    "read_starts_csv",
+    "to_csv",
+    "to_json",
+    "to_latex",
+    "to_text",
+]
+
+WORD_ROOM = 24
+"""Longest word that terminal text shows in full."""
+
+
+def _angles(orbit: Orbit) -> str:
+    return " ".join(map(repr, orbit.stability.angles))
+
+
+def _sources(record: Record) -> str:
+    return "; ".join(f"{source.citation} {source.label}".strip() for source in record.sources)
+
+
+COLUMNS: dict[str, Callable[[Record], str]] = {
+    "id": lambda record: str(record.id),
+    "start": lambda record: record.orbit.start.kind,
+    "p": lambda record: record.orbit.start.parameters[0],
+    "q": lambda record: record.orbit.start.parameters[1],
+    "period": lambda record: record.orbit.start.period,
+    "scaled_period": lambda record: repr(record.orbit.scaled_period),
+    "energy": lambda record: repr(record.orbit.energy),
+    "angular_momentum": lambda record: repr(record.orbit.angular_momentum),
+    "rotation": lambda record: repr(record.orbit.rotation),
+    "word": lambda record: record.orbit.word,
+    "word_length": lambda record: str(len(record.orbit.word)),
+    "cycle": lambda record: record.orbit.cycle,
+    "stability": lambda record: record.orbit.stability.kind,
+    "angles": lambda record: _angles(record.orbit),
+    "max_multiplier": lambda record: repr(record.orbit.stability.max_multiplier),
+    "choreography": lambda record: "yes" if record.orbit.choreography else "no",
+    "status": lambda record: str(record.orbit.status),
+    "closure": lambda record: repr(record.orbit.closure),
+    "least_separation": lambda record: repr(record.orbit.least_separation),
+    "sources": _sources,
+    "created": lambda record: record.created,
+    "tool_version": lambda record: record.tool_version,
+    "note": lambda record: record.note,
+}
+"""Columns of the CSV table in order, and how a record fills them.
+
+`p`, `q` and `period` are the decimal text of the record's own start; the other numbers are doubles
+with all of their digits.  `angles` has zero, one or two numbers with blanks between, `sources` the
+published rows with semicolons between.
+"""
+
+
+def to_csv(records: Iterable[Record]) -> str:
+    """Table with a heading and one line to each record.
+
+    Parameters
+    ----------
+    records : iterable of Record
+
+    Returns
+    -------
+    str
+        Comma-separated, cells quoted where needed; only the heading when there are no records.
+    """
+    text = io.StringIO()
+    writer = csv.writer(text, lineterminator="\n")
+    writer.writerow(COLUMNS)
+    for record in records:
+        writer.writerow([cell(record) for cell in COLUMNS.values()])
+    return text.getvalue()
+
+
+def to_json(records: Iterable[Record]) -> str:
+    """JSON array with one object to each record.
+
+    Parameters
+    ----------
+    records : iterable of Record
+
+    Returns
+    -------
+    str
+        Each object has the fields of `Orbit.to_json` and those of the record.  Numbers that are not
+        finite are null, since JSON has none.
+    """
+    values = [
+        {
+            "id": record.id,
+            **record.orbit.to_json(),
+            "created": record.created,
+            "tool_version": record.tool_version,
+            "run_id": record.run_id,
+            "note": record.note,
+            "sources": [
+                {
+                    "citation": source.citation,
+                    "label": source.label,
+                    "start": source.kind,
+                    "parameters": [source.p, source.q],
+                    "period": source.period,
+                    "outcome": source.outcome,
+                }
+                for source in record.sources
+            ],
+        }
+        for record in records
+    ]
+    return json.dumps(_finite(values), indent=2, allow_nan=False)
+
+
+def to_latex(records: Iterable[Record]) -> str:
+    """Tabular environment in the style of the booktabs package.
+
+    Parameters
+    ----------
+    records : iterable of Record
+
+    Returns
+    -------
+    str
+        Starts and periods with all of their digits, words in full, T* to ten digits.
+    """
+    headings = ["id", "start", "p", "q", "T", "T*", "word", "stability"]
+    rows = [
+        [
+            str(record.id),
+            record.orbit.start.kind,
+            *record.orbit.start.parameters,
+            record.orbit.start.period,
+            f"{record.orbit.scaled_period:.10g}",
+            record.orbit.word,
+            record.orbit.stability.kind,
+        ]
+        for record in records
+    ]
+    return _lay_out(headings, rows, "latex_booktabs")
+
+
+def to_text(records: Iterable[Record]) -> str:
+    """Table for a terminal.
+
+    Parameters
+    ----------
+    records : iterable of Record
+
+    Returns
+    -------
+    str
+        Numbers rounded to ten digits, words of more than `WORD_ROOM` letters cut short with their
+        length behind.
+    """
+    headings = ["id", "start", "p", "q", "T", "T*", "word", "stability", "choreography", "status"]
+    rows = [
+        [
+            str(record.id),
+            record.orbit.start.kind,
+            f"{record.orbit.start.p:.10g}",
+            f"{record.orbit.start.q:.10g}",
+            f"{record.orbit.period:.10g}",
+            f"{record.orbit.scaled_period:.10g}",
+            _short(record.orbit.word),
+            record.orbit.stability.kind,
+            "yes" if record.orbit.choreography else "no",
+            str(record.orbit.status),
+        ]
+        for record in records
+    ]
+    return _lay_out(headings, rows, "simple")
+
+
+def _lay_out(headings: list[str], rows: list[list[str]], style: str) -> str:
+    return tabulate(
+        # The library counts columns by the rows: without any, LaTeX would be given none.
+        rows or [[""] * len(headings)],
+        headers=headings,
+        tablefmt=style,
+        # It would round digits, and read a word of one letter or a label "1e5" as a number.
+        disable_numparse=True,
+        colalign=("right",) + ("left",) * (len(headings) - 1),
+    ).rstrip()
+
+
+def _short(word: str) -> str:
+    if len(word) <= WORD_ROOM:
+        return word
+    return f"{word[: WORD_ROOM - 8]}... ({len(word)})"
+
+
+def _finite(value: Any) -> Any:
+    """The same JSON value with null for every number that is not finite."""
+    if isinstance(value, dict):
+        return {key: _finite(item) for key, item in value.items()}
+    if isinstance(value, list):
+        return [_finite(item) for item in value]
+    if isinstance(value, float) and not math.isfinite(value):
+        return None
+    return value

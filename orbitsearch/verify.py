@@ -1,0 +1,252 @@
+"""The verdict: every check a periodic orbit must pass, with its number and its bound.
+
+Lengths are measured in 1/|E| and velocities in |E|^(1/2), so that nothing depends on the scale of
+the start.  A check fails when its value passes the bound although double precision could have held
+it; where the orbit is so unstable that rounding alone may pass the bound, the check stays open and
+the record says "not confirmed".
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from orbitsearch import bodies, flow, stability, words
+from orbitsearch.crossings import crossings
+from orbitsearch.errors import BadRequest
+from orbitsearch.independent import TOLERANCE, reintegrate
+from orbitsearch.orbit import Check, Orbit, Start, Status, Verdict
+from orbitsearch.starts import CONDITIONS, StartSet, period_multiple
+
+__all__ = ["BOUNDS", "verify"]
+
+Array = NDArray[np.float64]
+
+BOUNDS = {
+    "closure": 1e-7,
+    "independent closure": 1e-6,
+    "least period": 1e-5,
+    "energy drift": 1e-10,
+    "angular momentum": 1e-10,
+    "least separation": 1e-6,
+    "multipliers": 1e-5,
+}
+"""Bound of each check; of least period and least separation a lower, of the others an upper one."""
+
+# Rounding of the start and of the time of one period, over the norm of the monodromy matrix.
+ROUNDING = 1e-15
+# A value up to this many times what rounding was seen to do may be due to it.
+BENEFIT = 30.0
+# Directions in which the start is turned to see what rounding does to the motion: the lanes of one
+# vector, so they cost nothing.
+_DIRECTIONS = np.arange(8.0)
+
+
+@dataclass(frozen=True)
+class _Motion:
+    """The orbit integrated once: over a period with its monodromy, over half with every step."""
+
+    begin: Array
+    end: Array
+    period: float
+    energy: float
+    rotation: float
+    noise: float
+    half: flow.Trajectory
+
+
+def _angle(x: Array, y: Array) -> float:
+    """Angle by which y is x turned, in the sense of least squares."""
+    a, b = (z.reshape(6, 2) @ np.array([1.0, 1.0j]) for z in (x, y))
+    return float(np.angle(np.vdot(a, b)))
+
+
+def _distance(x: Array, y: Array, energy: float) -> float:
+    """Largest difference of a body's position or velocity, in the units of the energy."""
+    unit = abs(energy)
+    (r, v), (s, w) = bodies.sides_to_bodies(x), bodies.sides_to_bodies(y)
+    return float(
+        max(
+            np.linalg.norm(r - s, axis=1).max() * unit,
+            np.linalg.norm(v - w, axis=1).max() / np.sqrt(unit),
+        )
+    )
+
+
+def _decide(name: str, value: float, noise: float, note: str = "") -> Check:
+    """Upper bound: passed, failed, or open when rounding alone may have made the value."""
+    bound = BOUNDS[name]
+    if value <= bound:
+        return Check(name, value, bound, True, note)
+    if value <= BENEFIT * noise:
+        return Check(name, value, bound, None, "too unstable for double precision to decide")
+    return Check(name, value, bound, False, note)
+
+
+def _second_opinion(motion: _Motion) -> Check:
+    """Closure by DOP853; its noise is what a tenfold tolerance changes."""
+    back = -motion.rotation
+    ends = [bodies.turned(reintegrate(motion.begin, motion.period), back)]
+    value, noise = _distance(motion.begin, ends[0], motion.energy), 0.0
+    if value > BOUNDS["independent closure"]:
+        ends.append(bodies.turned(reintegrate(motion.begin, motion.period, 10 * TOLERANCE), back))
+        noise = _distance(ends[0], ends[1], motion.energy)
+    return _decide("independent closure", value, noise, "scipy DOP853, inertial frame")
+
+
+def _least_period(motion: _Motion, returns: int, closure: float) -> Check:
+    """Nearest the orbit comes to its start, up to a rotation, after T/n for n up to `returns`."""
+    bound = BOUNDS["least period"]
+    n = np.arange(2, max(returns, 2) + 1)
+    best, which = np.inf, 0
+    for k, state in zip(n, motion.half.states(motion.period / n), strict=True):
+        turned = bodies.turned(state, -_angle(motion.begin, state))
+        distance = _distance(motion.begin, turned, motion.energy)
+        if distance < best:
+            best, which = distance, int(k)
+    apart = best > max(bound, 10 * closure)
+    return Check("least period", best, bound, apart, f"nearest at T/{which}")
+
+
+def _is_choreography(motion: _Motion) -> bool:
+    """Whether the bodies follow each other on one curve, a third of the period apart.
+
+    When the orbit turns as a whole, the curve is one in the frame that turns with it.
+    """
+    third = motion.half.states(np.array([motion.period / 3.0]))[0]
+    pairs = bodies.turned(third, -motion.rotation / 3.0).reshape(2, 3, 2)
+    shifted = (np.roll(pairs, k, axis=1).ravel() for k in (1, 2))
+    distance = min(_distance(motion.begin, x, motion.energy) for x in shifted)
+    return distance < BOUNDS["least period"]
+
+
+def _least_separation(motion: _Motion) -> float:
+    """Least distance of two bodies along the orbit, in units of 1/|E|."""
+    events = motion.half.events
+    stationary = events.states[events.functions >= 5]
+    states = np.vstack([stationary, motion.begin, motion.half.last])
+    sides = states[:, :6].reshape(-1, 3, 2)
+    return float(np.linalg.norm(sides, axis=2).min() * abs(motion.energy))
+
+
+def _difference(a: tuple[complex, complex], b: tuple[complex, complex]) -> float:
+    """Largest difference of two pairs of traces over the larger of 1 and their size.
+
+    Pairs of equal modulus may come in either order.
+    """
+    size = max(1.0, abs(b[0]))
+    orders = (max(abs(a[0] - b[i]), abs(a[1] - b[1 - i])) for i in (0, 1))
+    return float(min(orders) / size)
+
+
+def _integrate(x: Array, period: float, relative: bool) -> _Motion | Verdict:
+    """The motion and the noise in it, or why it cannot be followed."""
+    half = flow.track(x, 0.5 * period)
+    whole = flow.propagate(np.array([bodies.turned(x, a) for a in _DIRECTIONS]), period)
+    for status in (half.status, *(flow.STATUS[int(code)] for code in whole.status)):
+        if status is not Status.CONVERGED:
+            return Verdict(Status.REJECTED, f"cannot be followed over its period: {status}")
+    energy = float(bodies.energy(x))
+    ends = [bodies.turned(end, -a) for end, a in zip(whole.states, _DIRECTIONS, strict=True)]
+    noise = max(_distance(ends[0], end, energy) for end in ends[1:])
+    rotation = _angle(x, ends[0]) if relative else 0.0
+    # An axis that comes back to itself to rounding has not turned at all.
+    rotation = 0.0 if abs(rotation) < 1e-8 else rotation
+    return _Motion(x, ends[0], period, energy, rotation, noise, half)
+
+
+def verify(starts: StartSet, p: float, q: float, time: float, kind: int) -> Orbit | Verdict:
+    """Verdict on one refined arc, with everything that is known of its orbit.
+
+    Parameters
+    ----------
+    starts : StartSet
+    p, q : float
+        Parameters of the start.
+    time : float
+        Time of the arc from the start to the end condition.
+    kind : int
+        End condition, key of `orbitsearch.starts.CONDITIONS`.
+
+    Returns
+    -------
+    Orbit
+        With `Orbit.status` ``verified``, ``not confirmed`` or ``rejected``.
+    Verdict
+        When the motion cannot even be followed over the period.
+
+    Notes
+    -----
+    Checks: closure of all bodies after T in the inertial frame (or after the stated rotation); no
+    return after T/n for n up to half the number of alignments; drift of energy and angular
+    momentum; closure by scipy's DOP853; least separation; Floquet multipliers by two computations.
+    """
+    own, stop = starts.own, CONDITIONS[kind]
+    multiple = period_multiple(own, stop)
+    period = multiple * time
+    x = starts.states(np.array([p]), np.array([q]))[0]
+    relative = own.reversal.plane == stop.reversal.plane == "mirror"
+    motion = _integrate(x, period, relative)
+    if isinstance(motion, Verdict):
+        return motion
+    energy = motion.energy
+    direct, blur, growth = stability.direct_traces(x, period, motion.rotation)
+    arc = stability.Arc(x, motion.half.states(np.array([time]))[0], time, own, stop)
+    traces, errors = stability.symmetric_traces(arc)
+    noise = growth * ROUNDING + motion.noise
+    difference = _difference(direct, traces)
+
+    seen = crossings(own, motion.half)
+    syzygies = "".join(str(body) for body, _ in seen)
+    try:
+        word = words.canonical_word(words.free_group_word(seen))
+    except BadRequest as problem:
+        return Verdict(Status.REJECTED, f"its alignments cannot be read: {problem}")
+    closure = _distance(x, bodies.turned(motion.end, -motion.rotation), energy)
+    along = motion.half.states(motion.half.times)
+    drift = float(np.abs(bodies.energy(along) / energy - 1.0).max())
+    momentum = float(np.abs(bodies.angular_momentum(along)).max() * np.sqrt(abs(energy)))
+    separation = _least_separation(motion)
+    least = BOUNDS["least separation"]
+    checks = (
+        _decide("closure", closure, noise),
+        _second_opinion(motion),
+        _least_period(motion, len(seen) // 2, closure),
+        _decide("energy drift", drift, 0.0),
+        _decide("angular momentum", momentum, 0.0),
+        Check("least separation", separation, least, separation > least),
+        _decide("multipliers", difference, blur + growth * noise, "two computations"),
+    )
+    start = Start.from_floats(starts.name, p, q, period)
+    return Orbit(
+        start=start,
+        energy=energy,
+        angular_momentum=float(bodies.angular_momentum(x)),
+        rotation=motion.rotation,
+        scaled_period=period * abs(energy) ** 1.5,
+        closure=closure,
+        least_separation=separation,
+        syzygies=syzygies,
+        cycle=words.canonical_cycle(syzygies),
+        word=word,
+        choreography=_is_choreography(motion),
+        stability=stability.classify(traces, errors),
+        verdict=_verdict(checks),
+        starts=(start,),
+    )
+
+
+def _verdict(checks: tuple[Check, ...]) -> Verdict:
+    failed = [c for c in checks if c.passed is False]
+    unsettled = [c.name for c in checks if c.passed is None]
+    if failed:
+        c = failed[0]
+        note = f" ({c.note})" if c.note else ""
+        reason = f"{c.name} is {c.value:.3g}{note}, bound {c.bound:.3g}"
+        return Verdict(Status.REJECTED, reason, checks)
+    if unsettled:
+        reason = f"too unstable for double precision to decide: {', '.join(unsettled)}"
+        return Verdict(Status.NOT_CONFIRMED, reason, checks)
+    return Verdict(Status.VERIFIED, "every check passed", checks)

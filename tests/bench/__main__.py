@@ -1,0 +1,39 @@
+"""Run the benchmarks: `python -m tests.bench [--repeats N] [name ...]`."""
+
+import argparse
+import platform
+
+import numba
+import numpy as np
+
+from orbitsearch import __version__
+from tests.bench import integrator
+from tests.bench.measure import report
+
+# Name on the command line: function that builds its tables.
+GROUPS = {
+    "integrator": integrator.sections,
+}
+
+
+def main() -> None:
+    """Parse the command line, measure, print."""
+    parser = argparse.ArgumentParser(prog="python -m tests.bench", description=__doc__)
+    parser.add_argument("groups", nargs="*", help=f"any of: {', '.join(GROUPS)} (default: all)")
+    parser.add_argument("--repeats", type=int, default=5, help="turns of which the median is taken")
+    options = parser.parse_args()
+    unknown = set(options.groups) - GROUPS.keys()
+    if unknown:
+        parser.error(f"unknown {sorted(unknown)}; choose from {sorted(GROUPS)}")
+    print(f"orbitsearch {__version__}, Python {platform.python_version()}, ", end="")
+    print(f"numpy {np.__version__}, numba {numba.__version__}, {platform.machine()}")
+    if not integrator.HAS_HEYOKA:
+        print("heyoka is not installed here: pip install -e '.[bench]' (Linux)")
+    for name in options.groups or GROUPS:
+        for section in GROUPS[name]():
+            print()
+            print(report(section, options.repeats))
+
+
+if __name__ == "__main__":
+    main()
