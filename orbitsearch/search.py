@@ -29,7 +29,7 @@ import numpy as np
 from orbitsearch import flow
 from orbitsearch.errors import BadRequest, OrbitsearchError
 from orbitsearch.orbit import Orbit, Start, Status, Verdict
-from orbitsearch.refine import Arc, complete, make_arc
+from orbitsearch.refine import Arc, complete, make_arc, refine
 from orbitsearch.scan import candidates, scan
 from orbitsearch.shoot import shoot
 from orbitsearch.starts import CONDITIONS, StartSet, start_set
@@ -265,11 +265,20 @@ class _Inline(Executor):
         return future
 
 
+def _warm_up() -> None:
+    """Compile every kernel here, so that the workers load them instead of each compiling them."""
+    starts = start_set("collinear")
+    corner = np.array([0.34, 0.35])
+    scan(starts, corner, corner, 1.0)
+    refine("collinear", 0.34712, 0.53272, 6.32591)
+
+
 @contextmanager
 def _pool(workers: int) -> Iterator[Executor]:
     if workers == 1:
         yield _Inline()
         return
+    _warm_up()
     # Spawned, not forked: the same on every system, and safe beside threads of a notebook.
     pool = ProcessPoolExecutor(
         workers, multiprocessing.get_context("spawn"), initializer=_start_worker

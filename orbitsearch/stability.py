@@ -14,7 +14,7 @@ with the 2n-th root of the multiplier there, so its figures are the ones reporte
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -32,6 +32,7 @@ __all__ = [
     "reversal_matrix",
     "rotation_matrix",
     "symmetric_traces",
+    "trace_difference",
 ]
 
 Array = NDArray[np.float64]
@@ -138,8 +139,7 @@ def direct_traces(
         w = _normal_space(start)
         found.append((_pair_traces(w.T @ m @ w), float(np.linalg.norm(m, 2))))
     (traces, growth), (other, _) = found
-    blur = max(abs(a - b) for a, b in zip(traces, other, strict=True)) / max(1.0, abs(traces[0]))
-    return traces, float(blur), growth
+    return traces, trace_difference(traces, other), growth
 
 
 def _arc_traces(arc: Arc) -> tuple[complex, complex]:
@@ -160,17 +160,32 @@ def symmetric_traces(arc: Arc) -> tuple[tuple[complex, complex], tuple[float, fl
     The errors are measured: the same arc turned to other directions in the plane is the same to
     mathematics but is rounded differently; ten times the spread of the results is reported.
     """
-    turned = [
-        _arc_traces(Arc(bodies.turned(arc.begin, t), bodies.turned(arc.end, t), arc.time,
-                        arc.start, arc.stop))
+    begin, *others = (
+        _arc_traces(replace(arc, begin=bodies.turned(arc.begin, t), end=bodies.turned(arc.end, t)))
         for t in _DIRECTIONS
-    ]  # fmt: skip
+    )
+    turned = [begin, *(_in_order_of(begin, other) for other in others)]
     errors = [
-        10.0 * max(abs(other[k] - turned[0][k]) for other in turned[1:])
-        + 1e-14 * max(1.0, abs(turned[0][k]))
+        10.0 * max(abs(other[k] - begin[k]) for other in turned) + 1e-14 * max(1.0, abs(begin[k]))
         for k in range(2)
     ]
-    return turned[0], (errors[0], errors[1])
+    return begin, (errors[0], errors[1])
+
+
+def _in_order_of(
+    one: tuple[complex, complex], other: tuple[complex, complex]
+) -> tuple[complex, complex]:
+    """The two traces of `other` in the order that fits `one`: equal moduli come in either."""
+    swapped = (other[1], other[0])
+    straight_miss = abs(one[0] - other[0]) + abs(one[1] - other[1])
+    swapped_miss = abs(one[0] - swapped[0]) + abs(one[1] - swapped[1])
+    return other if straight_miss <= swapped_miss else swapped
+
+
+def trace_difference(one: tuple[complex, complex], other: tuple[complex, complex]) -> float:
+    """Largest difference of two pairs of traces over the larger of 1 and their size."""
+    first, second = _in_order_of(one, other)
+    return float(max(abs(one[0] - first), abs(one[1] - second)) / max(1.0, abs(one[0])))
 
 
 def _multiplier(trace: complex) -> float:

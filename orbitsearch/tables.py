@@ -143,7 +143,7 @@ def to_latex(records: Iterable[Record]) -> str:
     str
         Starts and periods with all of their digits, words in full, T* to ten digits.
     """
-    headings = ["id", "start", "p", "q", "T", "T*", "word", "stability"]
+    headings = ["id", "start", "p", "q", "T", "T*", "rotation", "word", "stability"]
     rows = [
         [
             str(record.id),
@@ -151,6 +151,7 @@ def to_latex(records: Iterable[Record]) -> str:
             *record.orbit.start.parameters,
             record.orbit.start.period,
             f"{record.orbit.scaled_period:.10g}",
+            f"{record.orbit.rotation:.10g}",
             record.orbit.word,
             record.orbit.stability.kind,
         ]
@@ -172,7 +173,8 @@ def to_text(records: Iterable[Record]) -> str:
         Numbers rounded to ten digits, words of more than `WORD_ROOM` letters cut short with their
         length behind.
     """
-    headings = ["id", "start", "p", "q", "T", "T*", "word", "stability", "choreography", "status"]
+    headings = ["id", "start", "p", "q", "T", "T*", "rotation", "word", "stability"]
+    headings += ["choreography", "status"]
     rows = [
         [
             str(record.id),
@@ -181,6 +183,7 @@ def to_text(records: Iterable[Record]) -> str:
             f"{record.orbit.start.q:.10g}",
             f"{record.orbit.period:.10g}",
             f"{record.orbit.scaled_period:.10g}",
+            f"{record.orbit.rotation:.6g}",
             _short(record.orbit.word),
             record.orbit.stability.kind,
             "yes" if record.orbit.choreography else "no",

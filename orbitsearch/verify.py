@@ -131,16 +131,6 @@ def _least_separation(motion: _Motion) -> float:
     return float(np.linalg.norm(sides, axis=2).min() * abs(motion.energy))
 
 
-def _difference(a: tuple[complex, complex], b: tuple[complex, complex]) -> float:
-    """Largest difference of two pairs of traces over the larger of 1 and their size.
-
-    Pairs of equal modulus may come in either order.
-    """
-    size = max(1.0, abs(b[0]))
-    orders = (max(abs(a[0] - b[i]), abs(a[1] - b[1 - i])) for i in (0, 1))
-    return float(min(orders) / size)
-
-
 def _integrate(x: Array, period: float, relative: bool) -> _Motion | Verdict:
     """The motion and the noise in it, or why it cannot be followed."""
     half = flow.track(x, 0.5 * period)
@@ -196,7 +186,7 @@ def verify(starts: StartSet, p: float, q: float, time: float, kind: int) -> Orbi
     arc = stability.Arc(x, motion.half.states(np.array([time]))[0], time, own, stop)
     traces, errors = stability.symmetric_traces(arc)
     noise = growth * ROUNDING + motion.noise
-    difference = _difference(direct, traces)
+    difference = stability.trace_difference(traces, direct)
 
     seen = crossings(own, motion.half)
     syzygies = "".join(str(body) for body, _ in seen)

@@ -17,24 +17,22 @@ from tqdm import tqdm
 
 from orbitsearch import tables
 from orbitsearch.catalog import Catalog
-from orbitsearch.cli import report
+from orbitsearch.cli.report import (
+    complain,
+    counts_text,
+    orbit_text,
+    record_text,
+    say,
+    say_json,
+    verdict_text,
+)
 from orbitsearch.errors import BadRequest, OrbitsearchError
 from orbitsearch.orbit import Orbit, Status
 
 if TYPE_CHECKING:
     from orbitsearch.search import SearchRequest
 
-__all__ = [
-    "export",
-    "import_table",
-    "list_orbits",
-    "refine",
-    "runs",
-    "search",
-    "show",
-    "starts",
-    "verify",
-]
+__all__ = ["COMMANDS"]
 
 DONE, NO, STOPPED = 0, 1, 130
 
@@ -91,23 +89,19 @@ def search(options: Namespace) -> int:
         )
         run = catalog.runs()[-1].id
     if options.json:
-        report.say_json(
+        say_json(
             {
                 "run": run, "state": state, "request": request.to_json(), "counts": counts,
                 "new": sorted(new), "known": sorted(known),
             }
         )  # fmt: skip
     else:
-        report.say(report.counts_text(counts))
+        say(counts_text(counts))
         if records:
-            report.say("\n" + tables.to_text(records))
-        report.say(
-            f"\n{len(new)} new, {len(known)} known orbits; catalogue {options.catalog}, run {run}"
-        )
+            say("\n" + tables.to_text(records))
+        say(f"\n{len(new)} new, {len(known)} known orbits; catalogue {options.catalog}, run {run}")
     if state == "stopped":
-        report.complain(
-            f"stopped; the {len(new)} orbits found so far are kept in {options.catalog}"
-        )
+        complain(f"stopped; the {len(new)} orbits found so far are kept in {options.catalog}")
         return STOPPED
     return DONE
 
@@ -137,13 +131,13 @@ def refine(options: Namespace) -> int:
         value |= {"message": answer.message, "elsewhere": answer.elsewhere}
         if kept is not None:
             value |= {"id": kept.id, "new": kept.new}
-        report.say_json(value)
+        say_json(value)
     else:
         if orbit is not None:
-            report.say(report.orbit_text(orbit))
-        report.say(answer.message)
+            say(orbit_text(orbit))
+        say(answer.message)
         if kept is not None:
-            report.say(f"{'filed as' if kept.new else 'already filed as'} orbit {kept.id}")
+            say(f"{'filed as' if kept.new else 'already filed as'} orbit {kept.id}")
     return DONE if answer.status in (Status.VERIFIED, Status.NOT_CONFIRMED) else NO
 
 
@@ -163,14 +157,14 @@ def verify(options: Namespace) -> int:
             start = catalog.get(options.id).orbit.start
         found = verify_as_given(start.kind, start.p, start.q, float(start.period))
     if isinstance(found, Orbit):
-        value, text, status = found.to_json(), report.orbit_text(found), found.status
+        value, text, status = found.to_json(), orbit_text(found), found.status
     else:
         value = {"status": str(found.status), "reason": found.reason}
-        text, status = report.verdict_text(found), found.status
+        text, status = verdict_text(found), found.status
     if options.json:
-        report.say_json(value if options.id is None else {"id": options.id, **value})
+        say_json(value if options.id is None else {"id": options.id, **value})
     else:
-        report.say(text)
+        say(text)
     return DONE if status is Status.VERIFIED else NO
 
 
@@ -187,7 +181,7 @@ def list_orbits(options: Namespace) -> int:
             max_scaled_period=options.max_scaled_period,
             word=options.word,
         )
-        report.say(tables.to_json(records) if options.json else tables.to_text(records))
+        say(tables.to_json(records) if options.json else tables.to_text(records))
     return DONE
 
 
@@ -196,9 +190,9 @@ def show(options: Namespace) -> int:
     with Catalog.open(options.catalog, create=False) as catalog:
         record = catalog.get(options.id)
     if options.json:
-        report.say(tables.to_json([record])[1:-1].strip())
+        say(tables.to_json([record])[1:-1].strip())
     else:
-        report.say(report.record_text(record))
+        say(record_text(record))
     return DONE
 
 
@@ -217,11 +211,11 @@ def export(options: Namespace) -> int:
     if options.json:
         path = None if options.output is None else str(options.output)
         value = {"format": options.format, "orbits": len(records), "output": path}
-        report.say_json(value if options.output is not None else {**value, "text": text})
+        say_json(value if options.output is not None else {**value, "text": text})
     elif options.output is None:
-        report.say(text.rstrip("\n"))
+        say(text.rstrip("\n"))
     else:
-        report.say(f"{len(records)} orbits written to {options.output}")
+        say(f"{len(records)} orbits written to {options.output}")
     return DONE
 
 
@@ -249,10 +243,10 @@ def import_table(options: Namespace) -> int:
         for one in tqdm(done, total=len(rows), unit="row", file=sys.stderr, disable=None):
             results.append(one)
             if not options.json:
-                report.say(_row_text(one))
+                say(_row_text(one))
     failed = sum(one.id is None for one in results)
     if options.json:
-        report.say_json(
+        say_json(
             [
                 {
                     "line": one.row.line, "label": one.row.label, "start": one.row.start,
@@ -264,7 +258,7 @@ def import_table(options: Namespace) -> int:
             ]
         )  # fmt: skip
     else:
-        report.say(
+        say(
             f"{len(results) - failed} rows filed ({sum(one.new for one in results)} new orbits),"
             f" {failed} failed"
         )
@@ -282,7 +276,7 @@ def runs(options: Namespace) -> int:
     with Catalog.open(options.catalog, create=False) as catalog:
         found = catalog.runs()
     if options.json:
-        report.say_json(
+        say_json(
             [
                 {
                     "id": run.id, "state": run.state, "started": run.started,
@@ -295,7 +289,7 @@ def runs(options: Namespace) -> int:
     else:
         for run in found:
             ask, got = run.request, run.counts or {}
-            report.say(
+            say(
                 f"run {run.id} {run.state} {run.started}: {ask['start']} {ask['window']},"
                 f" grid {ask['grid']}, T* < {ask['scaled_period']:g}; {got.get('filed', 0)} new"
             )
@@ -317,10 +311,24 @@ def starts(options: Namespace) -> int:
         for name, one in START_SETS.items()
     }
     if options.json:
-        report.say_json(described)
+        say_json(described)
     else:
         for name, one in described.items():
             window = " ".join(f"{value:g}" for value in one["window"])
-            report.say(f"{name}  ({', '.join(one['parameters'])}), default window {window}")
-            report.say(f"  {one['description']}\n")
+            say(f"{name}  ({', '.join(one['parameters'])}), default window {window}")
+            say(f"  {one['description']}\n")
     return DONE
+
+
+COMMANDS = {
+    "search": search,
+    "refine": refine,
+    "verify": verify,
+    "list": list_orbits,
+    "show": show,
+    "export": export,
+    "import": import_table,
+    "runs": runs,
+    "starts": starts,
+}
+"""What each command does."""

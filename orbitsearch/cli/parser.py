@@ -7,14 +7,12 @@ from pathlib import Path
 from typing import NoReturn
 
 from orbitsearch import __version__
-from orbitsearch.cli import commands
+from orbitsearch.cli.commands import COMMANDS
 from orbitsearch.cli.report import complain
 
 __all__ = ["make_parser"]
 
 DEFAULT_CATALOG = Path("catalog") / "orbits.db"
-# Commands whose names Python keeps for itself.
-NAMES = {"import": "import_table", "list": "list_orbits"}
 SETS = "collinear, isosceles, rest or perpendicular"
 
 
@@ -41,7 +39,7 @@ def make_parser() -> argparse.ArgumentParser:
         one: argparse.ArgumentParser = add.add_parser(
             name, help=text, description=text, allow_abbrev=False
         )
-        one.set_defaults(run=getattr(commands, NAMES.get(name, name)))
+        one.set_defaults(run=COMMANDS[name])
         one.add_argument("--json", action="store_true", help="one JSON value instead of text")
         if catalog:
             one.add_argument(

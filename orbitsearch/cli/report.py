@@ -9,7 +9,15 @@ from typing import Any
 from orbitsearch.orbit import Check, Orbit, Verdict
 from orbitsearch.records import Record
 
-__all__ = ["complain", "counts_text", "orbit_text", "record_text", "say", "say_json"]
+__all__ = [
+    "complain",
+    "counts_text",
+    "orbit_text",
+    "record_text",
+    "say",
+    "say_json",
+    "verdict_text",
+]
 
 SHOWN_WORD = 200
 

@@ -5,12 +5,14 @@ import platform
 
 import numba
 import numpy as np
+from tabulate import tabulate
 
 from orbitsearch import __version__
 from tests.bench import integrator
-from tests.bench.measure import report
+from tests.bench.measure import measure
 
-# Name on the command line: function that builds its tables.
+# Name on the command line: function that builds its tables.  A new subject is a file beside
+# integrator.py with such a function, and a line here.
 GROUPS = {
     "integrator": integrator.sections,
 }
@@ -29,10 +31,14 @@ def main() -> None:
     print(f"numpy {np.__version__}, numba {numba.__version__}, {platform.machine()}")
     if not integrator.HAS_HEYOKA:
         print("heyoka is not installed here: pip install -e '.[bench]' (Linux)")
+    ratios = []
     for name in options.groups or GROUPS:
         for section in GROUPS[name]():
-            print()
-            print(report(section, options.repeats))
+            table, rows = measure(section, options.repeats)
+            print(f"\n{table}")
+            ratios += rows
+    print()
+    print(tabulate(ratios, ("", "times the time of", ""), disable_numparse=True))
 
 
 if __name__ == "__main__":

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 from tabulate import tabulate
 
-__all__ = ["Contestant", "Section", "report", "take_turns"]
+__all__ = ["Contestant", "Section", "measure", "take_turns"]
 
 
 @dataclass(frozen=True)
@@ -58,12 +58,15 @@ def take_turns(contestants: list[Contestant], repeats: int) -> list[float]:
     return [statistics.median(taken) for taken in times]
 
 
-def report(section: Section, repeats: int) -> str:
-    """Table of a section, measured now."""
+def measure(section: Section, repeats: int) -> tuple[str, list[tuple[str, str, str]]]:
+    """Measure a section now: its table, and for every rival a row of how it compares with ours."""
     medians = take_turns(section.contestants, repeats)
-    rows = [
-        (contestant.name, f"{median:,.0f}", f"{median / medians[0]:.2f}")
-        for contestant, median in zip(section.contestants, medians, strict=True)
-    ]
-    head = (section.title, f"ns per {section.unit}", "over the first")
-    return tabulate(rows, head, tablefmt="simple", colalign=("left", "right", "right"))
+    named = [(c.name, median) for c, median in zip(section.contestants, medians, strict=True)]
+    table = tabulate(
+        [(name, f"{median:,.0f}") for name, median in named],
+        (section.title, f"ns per {section.unit}"),
+        tablefmt="simple",
+        colalign=("left", "right"),
+    )
+    first = named[0][0]
+    return table, [(name, f"{median / medians[0]:.2f}", first) for name, median in named[1:]]
