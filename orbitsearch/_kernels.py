@@ -511,7 +511,8 @@ def _root_between(c, e, lo, flo, hi, fhi, x):
     """Root of event function e between lo and hi: Newton kept inside a shrinking bracket.
 
     The first trial is the secant point; each is checked against the bracket and replaced by its
-    middle when it falls outside.  On return x holds the state at the root.
+    middle when it falls outside.  Newton's error is the square of its last correction, so one of
+    1e-8 of the bracket is the last that can matter.  x is scratch.
     """
     h = lo - flo * (hi - lo) / (fhi - flo)
     width = abs(hi - lo)
@@ -529,9 +530,8 @@ def _root_between(c, e, lo, flo, hi, fhi, x):
             trial = 0.5 * (lo + hi)
         moved = abs(trial - h)
         h = trial
-        if moved <= 1e-14 * width:
+        if moved <= 1e-8 * width:
             break
-    _state_at(c, h, x)
     return h
 
 
@@ -790,8 +790,12 @@ def flow(w, x, d, times, nearest, max_steps, status, steps):
                 running -= 1
 
 
+# Rows of the event table of `scan`: values and rates after the step, and before it.
+NEW, NEW_RATE, OLD, OLD_RATE = 0, 1, 2, 3
+
+
 @_jit
-def _start_events(w, lane, x, f, rate):
+def _start_events(lane, x, table):
     """Event functions of a fresh start; one that is zero up to rounding is set to exactly zero."""
     size = 0.0
     speed = 0.0
@@ -803,8 +807,89 @@ def _start_events(w, lane, x, f, rate):
             e, x[0], x[1], x[2], x[3], x[4], x[5], x[6], x[7], x[8], x[9], x[10], x[11]
         )
         scale = size if e < 4 else math.sqrt(speed) / size
-        f[e, lane] = value if abs(value) > 1e-12 * scale else 0.0
-        rate[e, lane] = slope
+        table[NEW, e, lane] = value if abs(value) > 1e-12 * scale else 0.0
+        table[NEW_RATE, e, lane] = slope
+
+
+@_jit
+def _step_events(w, table):
+    """Event functions of all lanes after a step; those before it move to the old rows."""
+    ax, ay, bx, by, cx, cy = (
+        load(w, 0, 0), load(w, 1, 0), load(w, 2, 0), load(w, 3, 0), load(w, 4, 0), load(w, 5, 0)
+    )  # fmt: skip
+    au, av, bu, bv, cu, cv = (
+        load(w, 0, 1), load(w, 1, 1), load(w, 2, 1), load(w, 3, 1), load(w, 4, 1), load(w, 5, 1)
+    )  # fmt: skip
+    for e in range(SCAN_EVENTS):
+        store(table, OLD, e, load(table, NEW, e))
+        store(table, OLD_RATE, e, load(table, NEW_RATE, e))
+        value, slope = _event(e, ax, ay, bx, by, cx, cy, au, av, bu, bv, cu, cv)
+        store(table, NEW, e, value)
+        store(table, NEW_RATE, e, slope)
+
+
+@_jit
+def _expansion(w, before, lane, series):
+    """Series of one lane over the last step; its coefficients 0 and 1 were saved before it."""
+    for row in range(6):
+        series[row, 0] = before[row, 0, lane]
+        series[row, 1] = before[row, 1, lane]
+        for k in range(2, TERMS):
+            series[row, k] = w[row, k, lane]
+
+
+@_jit
+def _may_vanish(table, e, lane):
+    """Whether event function e may have a root in the last step of a lane."""
+    f0 = table[OLD, e, lane]
+    f1 = table[NEW, e, lane]
+    if f0 == 0.0:
+        return False
+    if (f0 < 0.0) != (f1 < 0.0):
+        return True
+    return f0 * table[OLD_RATE, e, lane] < 0.0 and f1 * table[NEW_RATE, e, lane] > 0.0
+
+
+@_jit
+def _record(series, e, lane, table, start, h, end, state, roots, count, kinds, when, first, second):
+    """Append the roots of event function e in a step to the events of a start; the new count.
+
+    An alignment is looked at twice, as a collinear and as a perpendicular state.  Kinetic energy
+    counts where it is least.  A count beyond the capacity says that events were lost.
+    """
+    found = _roots(
+        series, e, h, table[OLD, e, lane], table[OLD_RATE, e, lane],
+        table[NEW, e, lane], table[NEW_RATE, e, lane], state, roots,
+    )  # fmt: skip
+    for r in range(found):
+        t = start + roots[r]
+        _, slope = _event_at(series, roots[r], e, state)
+        if t > end or (e == 4 and slope < 0.0):
+            continue
+        for view in (e, EVENTS):
+            if view == EVENTS and e > 0:
+                continue
+            if count >= kinds.shape[0]:
+                return kinds.shape[0] + 1
+            kind, r1, r2 = _kind_and_residuals(view, state)
+            kinds[count] = kind
+            when[count] = t
+            first[count] = r1
+            second[count] = r2
+            count += 1
+    return count
+
+
+@_jit
+def _lane_status(state, nearest, steps, max_steps):
+    """STATUS_DONE while a start may go on, else why it must end."""
+    for p in range(3):
+        # Written so that NaN, from a passage through a collision, is one too.
+        if not state[2 * p] ** 2 + state[2 * p + 1] ** 2 >= nearest**2:
+            return STATUS_COLLISION
+    if _escapes(state):
+        return STATUS_ESCAPE
+    return STATUS_BUDGET if steps >= max_steps else STATUS_DONE
 
 
 @_jit
@@ -824,13 +909,9 @@ def scan(w, x, times, nearest, max_steps, status, steps, counts, kinds, when, fi
         the steps, filled.  A start whose events pass the capacity ends with STATUS_BUDGET.
     """
     n = x.shape[0]
-    capacity = kinds.shape[1]
     who = np.full(LANES, -1, np.int64)
     now = np.zeros(LANES)
-    f = np.zeros((SCAN_EVENTS, LANES))
-    rate = np.zeros((SCAN_EVENTS, LANES))
-    old_f = np.zeros(SCAN_EVENTS)
-    old_rate = np.zeros(SCAN_EVENTS)
+    table = np.zeros((4, SCAN_EVENTS, LANES))
     series = np.zeros((6, TERMS))
     state = np.zeros(12)
     roots = np.zeros(2)
@@ -843,100 +924,57 @@ def scan(w, x, times, nearest, max_steps, status, steps, counts, kinds, when, fi
             if who[lane] < 0 and following < n:
                 i = following
                 who[lane] = i
-                status[i] = STATUS_DONE
                 steps[i] = 0
                 counts[i] = 0
                 now[lane] = 0.0
                 _put(w, lane, x[i])
-                _start_events(w, lane, x[i], f, rate)
+                _start_events(lane, x[i], table)
                 running += 1
                 following += 1
         if running == 0:
             return
         _series(w)
         for lane in range(LANES):
-            if who[lane] < 0:
-                w[H, 0, lane] = 0.0
-            else:
-                w[H, 0, lane] = _natural_step(w, lane)
-        # The coefficients 0 and 1 are overwritten by the step; events need them.
-        before = _save(w)
+            w[H, 0, lane] = _natural_step(w, lane) if who[lane] >= 0 else 0.0
+        before = w[:6, :2].copy()
         _advance(w, 6)
+        for lane in range(LANES):
+            if who[lane] >= 0:
+                _close_triangle(w, lane, 0)
+        _step_events(w, table)
         for lane in range(LANES):
             i = who[lane]
             if i < 0:
                 continue
-            steps[i] += 1
             h = w[H, 0, lane]
-            _close_triangle(w, lane, 0)
-            _get(w, lane, state)
+            steps[i] += 1
             copied = False
             for e in range(SCAN_EVENTS):
-                old_f[e] = f[e, lane]
-                old_rate[e] = rate[e, lane]
-                f[e, lane], rate[e, lane] = _event(
-                    e,
-                    state[0], state[1], state[2], state[3], state[4], state[5],
-                    state[6], state[7], state[8], state[9], state[10], state[11],
-                )  # fmt: skip
-            for e in range(SCAN_EVENTS):
-                f0 = old_f[e]
-                f1 = f[e, lane]
-                if f0 == 0.0:
-                    continue
-                if (f0 < 0.0) == (f1 < 0.0) and not (
-                    f0 * old_rate[e] < 0.0 and f1 * rate[e, lane] > 0.0
-                ):
+                if not _may_vanish(table, e, lane):
                     continue
                 if not copied:
-                    for row in range(6):
-                        series[row, 0] = before[row, 0, lane]
-                        series[row, 1] = before[row, 1, lane]
-                        for k in range(2, TERMS):
-                            series[row, k] = w[row, k, lane]
+                    _expansion(w, before, lane, series)
                     copied = True
-                found = _roots(series, e, h, f0, old_rate[e], f1, rate[e, lane], state, roots)
-                for r in range(found):
-                    t = now[lane] + roots[r]
-                    _, slope = _event_at(series, roots[r], e, state)
-                    if t > times[i] or (e == 4 and slope < 0.0):
-                        continue
-                    for view in (e, EVENTS):
-                        if view == EVENTS and e > 0:
-                            continue
-                        if counts[i] == capacity:
-                            status[i] = STATUS_BUDGET
-                            continue
-                        kind, r1, r2 = _kind_and_residuals(view, state)
-                        kinds[i, counts[i]] = kind
-                        when[i, counts[i]] = t
-                        first[i, counts[i]] = r1
-                        second[i, counts[i]] = r2
-                        counts[i] += 1
+                counts[i] = _record(
+                    series, e, lane, table, now[lane], h, times[i], state, roots,
+                    counts[i], kinds[i], when[i], first[i], second[i],
+                )  # fmt: skip
             now[lane] += h
             _get(w, lane, state)
-            done = now[lane] >= times[i] or status[i] == STATUS_BUDGET
-            for p in range(3):
-                if not state[2 * p] ** 2 + state[2 * p + 1] ** 2 >= nearest[i] ** 2:
-                    status[i] = STATUS_COLLISION
-                    done = True
-            if not done and _escapes(state):
-                status[i] = STATUS_ESCAPE
-                done = True
-            if not done and steps[i] >= max_steps:
+            status[i] = _lane_status(state, nearest[i], steps[i], max_steps)
+            if counts[i] > kinds.shape[1]:
+                counts[i] = kinds.shape[1]
                 status[i] = STATUS_BUDGET
-                done = True
-            if done:
-                x[i] = state
-                _park(w, lane, 0)
-                who[lane] = -1
-                running -= 1
-
-
-@_jit
-def _save(w):
-    """Copy of coefficients 0 and 1 of the six coordinates, shape (6, 2, LANES)."""
-    return w[:6, :2].copy()
+            # The time may be up in the same step that ends the start for another reason; a
+            # collision still counts, for it may have spoilt the step.
+            if now[lane] >= times[i] and status[i] != STATUS_COLLISION:
+                status[i] = STATUS_DONE
+            elif status[i] == STATUS_DONE:
+                continue
+            x[i] = state
+            _park(w, lane, 0)
+            who[lane] = -1
+            running -= 1
 
 
 @_jit

@@ -188,7 +188,10 @@ class Provenance(CatalogFile):
             )
 
     def _check_orbit(self, id: int, name: str) -> None:
-        found = self._connection.execute("SELECT 1 FROM orbits WHERE id = ?", (id,)).fetchone()
+        # SQLite's integers end at 64 bits; a number beyond them names nothing either.
+        found = None
+        if abs(id) < 2**63:
+            found = self._connection.execute("SELECT 1 FROM orbits WHERE id = ?", (id,)).fetchone()
         if found is None:
             raise BadRequest(
                 f"`{name}` must name a record of this catalogue, got {id}: "

@@ -15,7 +15,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from orbitsearch import bodies, flow
+from orbitsearch import _kernels, bodies, flow
 from orbitsearch.orbit import Status
 from orbitsearch.starts import CONDITIONS, StartSet
 
@@ -36,8 +36,23 @@ REASONS = {
 
 # A correction below this is polishing: iterate until it stops shrinking, then call it converged.
 POLISHING = 1e-9
-# Residuals (free of scale) of a converged arc stay below this times the growth along it.
-SETTLED = 1e-12
+
+# Outcomes by number, so that a whole batch can be judged at once.
+RUNNING = -1
+OUTCOMES = (
+    Status.CONVERGED,
+    Status.DIVERGED,
+    Status.COLLISION,
+    Status.ESCAPE,
+    Status.DEGENERATE,
+    Status.BUDGET,
+)
+_CONVERGED, _DIVERGED, _COLLISION, _ESCAPE, _DEGENERATE, _BUDGET = range(len(OUTCOMES))
+
+# All conditions in the order of their numbers, stacked for batches with mixed ends.
+_NUMBERS = sorted(CONDITIONS)
+_FORMS = np.array([CONDITIONS[k].forms for k in _NUMBERS])
+_DEGREES = np.array([CONDITIONS[k].degrees for k in _NUMBERS])
 
 
 @dataclass(frozen=True)
@@ -74,11 +89,9 @@ def _residuals_and_jacobian(
     """Residuals, shape (n, 3), and derivatives by p, q, ln t, shape (n, 3, 3)."""
     moved = flow.propagate(starts.states(p, q), t, starts.tangents(p, q))
     x = moved.states
-    forms = np.array([CONDITIONS[k].forms for k in sorted(CONDITIONS)])
-    degrees = np.array([CONDITIONS[k].degrees for k in sorted(CONDITIONS)])
-    rows = np.searchsorted(sorted(CONDITIONS), kinds)
-    gradient = np.einsum("nmij,nj->nmi", forms[rows], x)
-    scale = bodies.size(x)[:, None] ** degrees[rows]
+    rows = np.searchsorted(_NUMBERS, kinds)
+    gradient = np.einsum("nmij,nj->nmi", _FORMS[rows], x)
+    scale = bodies.size(x)[:, None] ** _DEGREES[rows]
     along = (t[:, None] * bodies.flow_direction(x))[:, None, :]
     directions = np.concatenate([moved.tangents, along], axis=1)
     jacobian = np.einsum("nmi,nki->nmk", gradient, directions) / scale[:, :, None]
@@ -96,6 +109,74 @@ def _solve(jacobian: Array, residual: Array) -> tuple[Array, NDArray[np.bool_]]:
         balanced[bad] = np.eye(3)
         right = np.where(bad[:, None], 0.0, -residual / weight)
         return np.linalg.solve(balanced, right[:, :, None])[:, :, 0], bad
+
+
+class _Batch:
+    """Guesses on their way: where each stands, and how it ended if it did."""
+
+    def __init__(self, starts: StartSet, kinds: Integers, p: Array, q: Array, time: Array) -> None:
+        n = len(p)
+        self.starts = starts
+        self.kinds = kinds
+        self.at = np.array([p, q], dtype=np.float64)
+        self.guess = self.at.copy()
+        self.time = np.array(time, dtype=np.float64)
+        self.status = np.full(n, RUNNING, dtype=np.int64)
+        self.residual = np.full(n, np.inf)
+        self.error = np.full(n, np.inf)
+        self.iterations, self.steps, self.stalled = (np.zeros(n, np.int64) for _ in range(3))
+
+    @property
+    def active(self) -> Integers:
+        """Indices of the guesses that have not ended."""
+        return np.flatnonzero(self.status == RUNNING)
+
+    def iterate(self, reach: float, patience: int) -> None:
+        """One Newton iteration of every active guess."""
+        i = self.active
+        p, q = self.at[:, i]
+        f, jacobian, moved = _residuals_and_jacobian(self.starts, self.kinds[i], p, q, self.time[i])
+        delta, singular = _solve(jacobian, f)
+        size = np.max(np.abs(delta), axis=1)
+        self.iterations[i] += 1
+        self.steps[i] += moved.steps
+        self.residual[i] = np.max(np.abs(f), axis=1)
+        self.stalled[i] = np.where(size < 0.7 * self.error[i], 0, self.stalled[i] + 1)
+        self.status[i] = np.select(
+            [
+                moved.status == _kernels.STATUS_COLLISION,
+                moved.status == _kernels.STATUS_BUDGET,
+                singular | ~np.isfinite(size),
+                (size == 0.0) | ((size < POLISHING) & (size > 0.5 * self.error[i])),
+                self.stalled[i] > patience,
+            ],
+            [_COLLISION, _BUDGET, _DEGENERATE, _CONVERGED, _DIVERGED],
+            default=RUNNING,
+        )
+        going = self.status[i] == RUNNING
+        self._correct(i[going], delta[going], size[going], reach)
+
+    def _correct(self, i: Integers, delta: Array, size: Array, reach: float) -> None:
+        """Apply corrections, cut to a part of the reach, and end those that leave it."""
+        with np.errstate(divide="ignore"):
+            largest = np.max(np.abs(delta[:, :2]), axis=1)
+            cut = np.minimum(1.0, np.minimum(0.25 * reach / largest, 0.1 / np.abs(delta[:, 2])))
+        self.error[i] = np.minimum(self.error[i], size)
+        self.at[:, i] += cut * delta[:, :2].T
+        self.time[i] *= 1.0 + cut * delta[:, 2]
+        p, q = self.at[:, i]
+        gone = np.max(np.abs(self.at[:, i] - self.guess[:, i]), axis=0) > reach
+        gone |= ~self.starts.inside(p, q)
+        gone |= ~(self.starts.energies(p, q) < 0)
+        self.status[i[gone]] = _ESCAPE
+
+    def shots(self) -> Shots:
+        """Outcome; what is still active has used up its iterations."""
+        status = [OUTCOMES[code] if code != RUNNING else Status.BUDGET for code in self.status]
+        p, q = self.at
+        return Shots(
+            p, q, self.time, status, self.residual, self.error, self.iterations, self.steps
+        )
 
 
 def shoot(
@@ -133,69 +214,9 @@ def shoot(
     a correction below 1e-9 no longer halves the one before: what is left is rounding, and its size
     is reported as the error.
     """
-    n = len(p)
-    p, q, time = (np.array(v, dtype=np.float64) for v in (p, q, time))
-    p0, q0 = p.copy(), q.copy()
-    status = [Status.BUDGET] * n
-    residual = np.full(n, np.inf)
-    error = np.full(n, np.inf)
-    iterations = np.zeros(n, np.int64)
-    steps = np.zeros(n, np.int64)
-    stalled = np.zeros(n, np.int64)
-    active = np.arange(n)
+    batch = _Batch(starts, kinds, p, q, time)
     for _ in range(max_iterations):
-        if not len(active):
+        if not len(batch.active):
             break
-        f, jacobian, moved = _residuals_and_jacobian(
-            starts, kinds[active], p[active], q[active], time[active]
-        )
-        iterations[active] += 1
-        steps[active] += moved.steps
-        delta, singular = _solve(jacobian, f)
-        size = np.max(np.abs(delta), axis=1)
-        keep = []
-        for row, i in enumerate(active):
-            ended = flow.STATUS[int(moved.status[row])]
-            if ended is not Status.CONVERGED:
-                status[i] = ended
-                continue
-            largest = float(np.max(np.abs(f[row])))
-            if singular[row] or not np.isfinite(size[row]):
-                status[i] = Status.DEGENERATE
-                residual[i] = largest
-                continue
-            polishing = size[row] < POLISHING
-            if polishing and size[row] > 0.5 * error[i]:
-                status[i] = Status.CONVERGED
-                continue
-            stalled[i] = 0 if size[row] < 0.7 * error[i] else stalled[i] + 1
-            if stalled[i] > patience:
-                status[i] = Status.DIVERGED
-                residual[i] = largest
-                continue
-            cut = min(
-                1.0,
-                0.25 * reach / max(abs(delta[row, 0]), abs(delta[row, 1]), 1e-300),
-                0.1 / max(abs(delta[row, 2]), 1e-300),
-            )
-            error[i] = min(error[i], size[row])
-            residual[i] = largest
-            p[i] += cut * delta[row, 0]
-            q[i] += cut * delta[row, 1]
-            time[i] *= 1.0 + cut * delta[row, 2]
-            if size[row] == 0.0:
-                status[i] = Status.CONVERGED
-                continue
-            if max(abs(p[i] - p0[i]), abs(q[i] - q0[i])) > reach:
-                status[i] = Status.ESCAPE
-                continue
-            keep.append(i)
-        active = np.array(keep, dtype=np.int64)
-        if len(active):
-            valid = starts.inside(p[active], q[active]) & (
-                starts.energies(p[active], q[active]) < 0
-            )
-            for i in active[~valid]:
-                status[i] = Status.ESCAPE
-            active = active[valid]
-    return Shots(p, q, time, status, residual, error, iterations, steps)
+        batch.iterate(reach, patience)
+    return batch.shots()

@@ -116,8 +116,10 @@ def _is_choreography(motion: _Motion) -> bool:
     When the orbit turns as a whole, the curve is one in the frame that turns with it.
     """
     third = motion.half.states(np.array([motion.period / 3.0]))[0]
-    pairs = bodies.turned(third, -motion.rotation / 3.0).reshape(2, 3, 2)
-    shifted = (np.roll(pairs, k, axis=1).ravel() for k in (1, 2))
+    # The angle of a third is known up to a third of a turn only; without rotation it must be none.
+    turns = range(3) if motion.rotation else range(1)
+    back = [bodies.turned(third, -(motion.rotation + 2 * np.pi * k) / 3.0) for k in turns]
+    shifted = (np.roll(x.reshape(2, 3, 2), k, axis=1).ravel() for x in back for k in (1, 2))
     distance = min(_distance(motion.begin, x, motion.energy) for x in shifted)
     return distance < BOUNDS["least period"]
 
@@ -191,9 +193,10 @@ def verify(starts: StartSet, p: float, q: float, time: float, kind: int) -> Orbi
     seen = crossings(own, motion.half)
     syzygies = "".join(str(body) for body, _ in seen)
     try:
-        word = words.canonical_word(words.free_group_word(seen))
+        word, unreadable = words.canonical_word(words.free_group_word(seen)), ""
     except BadRequest as problem:
-        return Verdict(Status.REJECTED, f"its alignments cannot be read: {problem}")
+        # Only half a period is read: of a motion that does not close, the rest is another one.
+        word, unreadable = "", f"its alignments cannot be read: {problem}"
     closure = _distance(x, bodies.turned(motion.end, -motion.rotation), energy)
     along = motion.half.states(motion.half.times)
     drift = float(np.abs(bodies.energy(along) / energy - 1.0).max())
@@ -209,6 +212,9 @@ def verify(starts: StartSet, p: float, q: float, time: float, kind: int) -> Orbi
         Check("least separation", separation, least, separation > least),
         _decide("multipliers", difference, blur + growth * noise, "two computations"),
     )
+    verdict = _verdict(checks)
+    if unreadable and verdict.status is not Status.REJECTED:
+        return Verdict(Status.REJECTED, unreadable, checks)
     start = Start.from_floats(starts.name, p, q, period)
     return Orbit(
         start=start,
@@ -223,7 +229,7 @@ def verify(starts: StartSet, p: float, q: float, time: float, kind: int) -> Orbi
         word=word,
         choreography=_is_choreography(motion),
         stability=stability.classify(traces, errors),
-        verdict=_verdict(checks),
+        verdict=verdict,
         starts=(start,),
     )
 

@@ -1,6 +1,7 @@
-"""The command line for tests: inside this process with what it wrote, or as a program of its own."""
+"""The command line for tests: inside this process, or as a program of its own."""
 
 import json
+import os
 import subprocess
 import sys
 from collections.abc import Sequence
@@ -8,6 +9,7 @@ from pathlib import Path
 from typing import Any, NamedTuple
 
 from orbitsearch.cli import main
+from orbitsearch.starts import START_SETS
 
 ROOT = Path(__file__).resolve().parents[1]
 
@@ -16,6 +18,13 @@ EIGHT_WINDOW = ("--window", "0.3", "0.4", "0.5", "0.6", "--grid", "8", "--scaled
 
 # C. Moore, PRL 70 (1993) 3675, to six digits.
 EIGHT_GUESS = ("--start", "collinear", "--at", "0.347117", "0.532725", "--period", "6.3259")
+
+
+ORBIT_FIELDS = {
+    "status", "start", "parameters", "period", "energy", "angular_momentum", "rotation",
+    "scaled_period", "closure", "least_separation", "syzygies", "word", "stability",
+    "choreography",
+}  # fmt: skip
 
 
 class Ran(NamedTuple):
@@ -45,11 +54,13 @@ def run(capsys: Any, *arguments: object) -> Ran:
     return Ran(code, *capsys.readouterr())
 
 
-def program(*arguments: object, **more: Any) -> subprocess.Popen[str]:
+def program(*arguments: object, cwd: Path, **more: Any) -> subprocess.Popen[str]:
     """``python -m orbitsearch`` started in a process of its own, its output in pipes."""
+    paths = [str(ROOT), *filter(None, [os.environ.get("PYTHONPATH")])]
+    pipes = {"stdout": subprocess.PIPE, "stderr": subprocess.PIPE} | more
     return subprocess.Popen(
-        command_line(*arguments), text=True, cwd=more.pop("cwd", ROOT),
-        stdout=more.pop("stdout", subprocess.PIPE), stderr=subprocess.PIPE, **more,
+        command_line(*arguments), text=True, cwd=cwd,
+        env={**os.environ, "PYTHONPATH": os.pathsep.join(paths)}, **pipes,
     )  # fmt: skip
 
 
@@ -66,3 +77,20 @@ def complaint(ran: Ran) -> str:
     assert ran.err.endswith("\n")
     assert ran.err.count("\n") == 1, ran.err
     return ran.err
+
+
+def check_orbit(value: dict[str, Any]) -> None:
+    """Assert that a JSON value has every field of an orbit, each of its kind."""
+    assert value.keys() >= ORBIT_FIELDS
+    assert value["start"] in START_SETS
+    first, second = value["parameters"]
+    assert isinstance(first, str)
+    assert repr(float(first)) == first
+    assert repr(float(second)) == second
+    for field in ("period", "energy", "angular_momentum", "rotation", "scaled_period", "closure"):
+        assert isinstance(value[field], float), field
+    assert set(value["syzygies"]) <= set("123")
+    assert set(value["word"]) <= set("abAB")
+    assert isinstance(value["choreography"], bool)
+    assert value["stability"].keys() >= {"kind", "angles", "max_multiplier"}
+    assert value["energy"] < 0 < value["least_separation"]

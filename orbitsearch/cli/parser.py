@@ -82,7 +82,10 @@ def make_parser() -> argparse.ArgumentParser:
     one.add_argument("id", type=int, metavar="ID", help="number in the catalogue")
 
     one = command("export", "Write the catalogue as a table.")
-    one.add_argument("--format", choices=("csv", "json", "latex"), required=True)
+    one.add_argument(
+        "--format", choices=("csv", "json", "latex"), required=True,
+        help="csv and json keep every digit, and `import` reads csv",
+    )  # fmt: skip
     one.add_argument("--output", type=Path, metavar="FILE", help="default: standard output")
 
     one = command("import", "Refine the rows of a published table and match them to the catalogue.")

@@ -168,7 +168,9 @@ class StartSet(ABC):
 
     def energies(self, p: Array, q: Array) -> Array:
         """Energy of each start, shape (n,)."""
-        return bodies.energy(self.states(p, q))
+        # A request may hold any numbers; what overflows is not bound, and says so as inf or NaN.
+        with np.errstate(over="ignore", invalid="ignore"):
+            return bodies.energy(self.states(p, q))
 
     @property
     def own(self) -> Condition:
