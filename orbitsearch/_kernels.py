@@ -512,7 +512,8 @@ def _root_between(c, e, lo, flo, hi, fhi, x):
 
     The first trial is the secant point; each is checked against the bracket and replaced by its
     middle when it falls outside.  Newton's error is the square of its last correction, so one of
-    1e-8 of the bracket is the last that can matter.  x is scratch.
+    1e-8 of the bracket is the last that can matter; a middle promises nothing of the kind, even
+    when the bracket is that small.  x is scratch.
     """
     h = lo - flo * (hi - lo) / (fhi - flo)
     width = abs(hi - lo)
@@ -526,11 +527,12 @@ def _root_between(c, e, lo, flo, hi, fhi, x):
         else:
             hi = h
         trial = h - f / rate
-        if not (min(lo, hi) < trial < max(lo, hi)):
+        inside = min(lo, hi) <= trial <= max(lo, hi)
+        if not inside:
             trial = 0.5 * (lo + hi)
         moved = abs(trial - h)
         h = trial
-        if moved <= 1e-8 * width:
+        if moved <= (1e-8 if inside else 1e-15) * width:
             break
     return h
 

@@ -24,8 +24,9 @@ Integers = NDArray[np.int64]
 NEAREST = 1e-5
 """Closest approach, over the size of the start, at which a scan gives a start up."""
 
-# Events kept for a start: over three times what the densest arcs of T* = 100 were seen to have.
+# Events kept for a start: at least, and per unit of T*; over three times the densest arcs seen.
 CAPACITY = 2000
+CAPACITY_RATE = 40
 # Neighbouring events correspond when their scaled times differ by less than this share.
 SAME_TIME = 0.3
 # How far outside the triangle (in barycentric units) a zero may lie: the residuals are not linear.
@@ -115,8 +116,9 @@ def scan(starts: StartSet, p: Array, q: Array, scaled_period: float) -> Scan:
     rate = np.abs(energy[index]) ** 1.5
     n = len(index)
     codes, steps, counts = (np.zeros(n, np.int64) for _ in range(3))
-    kinds = np.zeros((n, CAPACITY), np.int64)
-    when, first, second = (np.empty((n, CAPACITY)) for _ in range(3))
+    capacity = max(CAPACITY, int(CAPACITY_RATE * scaled_period))
+    kinds = np.zeros((n, capacity), np.int64)
+    when, first, second = (np.empty((n, capacity)) for _ in range(3))
     _kernels.scan(
         _kernels.workspace(), x, 0.5 * scaled_period / rate, NEAREST * bodies.size(x),
         flow.MAX_STEPS, codes, steps, counts, kinds, when, first, second,

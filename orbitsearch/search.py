@@ -204,23 +204,25 @@ def _scan_tile(request: SearchRequest, tile: int) -> _Tile:
     mine_q = q[columns[j][0] : columns[j][1] + 1]
     seen = scan(starts, mine_p, mine_q, request.scaled_period)
     found = candidates(starts, seen, request.scaled_period)
+    # Starts of a common edge are counted in the first tile that has them.
+    valid, status = (values[int(i > 0) :, int(j > 0) :] for values in (seen.valid, seen.status))
     cell = max(p[1] - p[0], q[1] - q[0])
     shots = shoot(starts, found.kind, found.p, found.q, found.time, reach=REACH_CELLS * cell)
     counts: Counter[str] = Counter(
-        starts=int(seen.valid.sum()),
-        skipped=int((~seen.valid).sum()),
+        starts=int(valid.sum()),
+        skipped=int((~valid).sum()),
         steps=seen.steps,
         candidates=len(found),
         newton_iterations=int(shots.iterations.sum()),
         newton_steps=int(shots.steps.sum()),
     )
-    for code, status in flow.STATUS.items():
-        if status is not Status.CONVERGED:
-            counts[f"starts ended by {status}"] += int((seen.status == code).sum())
+    for code, ending in flow.STATUS.items():
+        if ending is not Status.CONVERGED:
+            counts[f"starts ended by {ending}"] += int((status == code).sum())
     arcs: list[Arc] = []
-    for k, status in enumerate(shots.status):
-        counts[f"candidates {status}"] += 1
-        if status is not Status.CONVERGED:
+    for k, ending in enumerate(shots.status):
+        counts[f"candidates {ending}"] += 1
+        if ending is not Status.CONVERGED:
             continue
         arc = make_arc(shots, k, int(found.kind[k]))
         energy = float(starts.energies(shots.p[k : k + 1], shots.q[k : k + 1])[0])
@@ -321,20 +323,25 @@ class _Search:
         self.pool = pool
         self.counts: Counter[str] = Counter()
         self.seen: list[tuple[float, float]] = []
+        self.found: list[tuple[float, float]] = []
         self.under_way: deque[tuple[Start, Future[Orbit | Verdict]]] = deque()
 
     def _is_new(self, arc: Arc) -> bool:
         """Whether no such start was met in this run or is in the catalogue."""
-        if self.seen:
-            near = np.abs(np.array(self.seen) - (arc.p, arc.q)).max(axis=1)
-            if near.min() < SAME_START:
-                self.counts["repeated"] += 1
-                return False
+        if self._near(self.seen, (arc.p, arc.q)):
+            self.counts["repeated"] += 1
+            return False
         self.seen.append((arc.p, arc.q))
         if self.known(self._start(arc)):
             self.counts["known"] += 1
             return False
         return True
+
+    @staticmethod
+    def _near(places: list[tuple[float, float]], place: tuple[float, float]) -> bool:
+        if not places:
+            return False
+        return bool(np.abs(np.array(places) - place).max(axis=1).min() < SAME_START)
 
     def _start(self, arc: Arc) -> Start:
         return Start.from_floats(self.request.start, arc.p, arc.q, arc.period(self.starts))
@@ -363,7 +370,13 @@ class _Search:
             if outcome.scaled_period > self.request.scaled_period:
                 self.counts["beyond the scaled period"] += 1
                 continue
-            self.seen += [(s.p, s.q) for s in outcome.starts if s.kind == self.request.start]
+            places = [(s.p, s.q) for s in outcome.starts if s.kind == self.request.start]
+            if any(self._near(self.found, place) for place in places):
+                # Its other start was under way before this process knew that the two are one.
+                self.counts["repeated"] += 1
+                continue
+            self.found += places
+            self.seen += places
             self.counts[str(verdict.status)] += 1
             yield Found(outcome)
 
@@ -384,6 +397,11 @@ def search(
         it were consumed, so it may look at what those were filed as.
     workers : int, optional
         Worker processes; by default one for each core.  1 works in this process.
+
+    Notes
+    -----
+    Workers are started afresh, so a script that searches with more than one needs the usual
+    ``if __name__ == "__main__":`` around what it does.
 
     Yields
     ------

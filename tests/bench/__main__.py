@@ -8,13 +8,14 @@ import numpy as np
 from tabulate import tabulate
 
 from orbitsearch import __version__
-from tests.bench import integrator
+from tests.bench import integrator, searching
 from tests.bench.measure import measure
 
 # Name on the command line: function that builds its tables.  A new subject is a file beside
 # integrator.py with such a function, and a line here.
 GROUPS = {
     "integrator": integrator.sections,
+    "searching": searching.sections,
 }
 
 

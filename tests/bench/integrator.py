@@ -40,7 +40,7 @@ def our_scan() -> float:
     """Lane-steps of many starts with every event recorded."""
     n = len(STARTS)
     status, steps, counts = (np.zeros(n, np.int64) for _ in range(3))
-    kinds = np.zeros((n, 8 * STEPS), np.int8)
+    kinds = np.zeros((n, 8 * STEPS), np.int64)
     when, first, second = (np.zeros(kinds.shape) for _ in range(3))
     _kernels.scan(
         _kernels.workspace(),

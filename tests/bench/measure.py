@@ -63,10 +63,10 @@ def measure(section: Section, repeats: int) -> tuple[str, list[tuple[str, str, s
     medians = take_turns(section.contestants, repeats)
     named = [(c.name, median) for c, median in zip(section.contestants, medians, strict=True)]
     table = tabulate(
-        [(name, f"{median:,.0f}") for name, median in named],
-        (section.title, f"ns per {section.unit}"),
+        [(name, f"{median:,.0f}", f"{6e10 / median:,.0f}") for name, median in named],
+        (section.title, f"ns per {section.unit}", f"{section.unit}s per CPU-minute"),
         tablefmt="simple",
-        colalign=("left", "right"),
+        colalign=("left", "right", "right"),
     )
     first = named[0][0]
     return table, [(name, f"{median / medians[0]:.2f}", first) for name, median in named[1:]]
