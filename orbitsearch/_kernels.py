@@ -62,8 +62,9 @@ STATUS_ESCAPE = 2
 STATUS_BUDGET = 3
 
 # Rows of the workspace: Ax Ay Bx By Cx Cy, then for each pair |X|^2, |X|^-3, k/2 times the k-th
-# coefficient of |X|^2, and the step length.  The variational part follows: |X|^-5, u = 3 X |X|^-5,
-# and the symmetric matrix G = I |X|^-3 - 3 X X^T |X|^-5; then six rows for each tangent.
+# coefficient of |X|^2, and last the step length and, after the step, the least squared side.  The
+# variational part follows: |X|^-5, u = 3 X |X|^-5, and the symmetric matrix
+# G = I |X|^-3 - 3 X X^T |X|^-5; then six rows for each tangent.
 S, Q, D, H = 6, 9, 12, 15
 P, U, G, TANGENT = 16, 19, 25, 34
 
@@ -93,6 +94,7 @@ class LaneVector(types.Type):
 LANE_VECTOR = LaneVector()
 _IR = ir.VectorType(ir.DoubleType(), LANES)
 _I32 = ir.IntType(32)
+_IBITS = ir.VectorType(ir.IntType(64), LANES)
 
 
 @register_model(LaneVector)
@@ -131,6 +133,43 @@ def _vector_sqrt(typingctx, x):
         return builder.call(function, args)
 
     return LANE_VECTOR(LANE_VECTOR), codegen
+
+
+@intrinsic
+def _vector_choose(typingctx, a, b, x, y):
+    def codegen(context, builder, signature, args):
+        at_least = builder.fcmp_ordered(">=", args[0], args[1])
+        return builder.select(at_least, args[2], args[3])
+
+    return LANE_VECTOR(*(LANE_VECTOR,) * 4), codegen
+
+
+@intrinsic
+def _vector_magnitude(typingctx, x):
+    def codegen(context, builder, signature, args):
+        kind = ir.FunctionType(_IR, [_IR])
+        function = cgutils.get_or_insert_function(builder.module, kind, f"llvm.fabs.v{LANES}f64")
+        return builder.call(function, args)
+
+    return LANE_VECTOR(LANE_VECTOR), codegen
+
+
+@intrinsic
+def _vector_bits(typingctx, x):
+    def codegen(context, builder, signature, args):
+        return builder.sitofp(builder.bitcast(args[0], _IBITS), _IR)
+
+    return LANE_VECTOR(LANE_VECTOR), codegen
+
+
+@intrinsic
+def _vector_scale(typingctx, x, power):
+    def codegen(context, builder, signature, args):
+        shift = ir.Constant(_IBITS, [52] * LANES)
+        exponent = builder.shl(builder.fptosi(args[1], _IBITS), shift)
+        return builder.bitcast(builder.add(builder.bitcast(args[0], _IBITS), exponent), _IR)
+
+    return LANE_VECTOR(LANE_VECTOR, LANE_VECTOR), codegen
 
 
 def _address(context, builder, array_type, array, row, term):
@@ -179,6 +218,46 @@ def root(x):
     return np.sqrt(x)
 
 
+def choose(a, b, x, y):
+    """Lane by lane x where a >= b, else y."""
+    return np.where(a >= b, x, y)
+
+
+def magnitude(x):
+    """Absolute value of each lane."""
+    return np.abs(x)
+
+
+def bits(x):
+    """Bit pattern of each lane as an integer, given as a double."""
+    return x.view(np.int64).astype(np.float64)
+
+
+def scale(x, power):
+    """Each lane times two to a whole power, by adding to its exponent."""
+    return (x.view(np.int64) + (power.astype(np.int64) << 52)).view(np.float64)
+
+
+@overload(choose)
+def _choose_compiled(a, b, x, y):
+    return lambda a, b, x, y: _vector_choose(a, b, x, y)
+
+
+@overload(magnitude)
+def _magnitude_compiled(x):
+    return lambda x: _vector_magnitude(x)
+
+
+@overload(bits)
+def _bits_compiled(x):
+    return lambda x: _vector_bits(x)
+
+
+@overload(scale)
+def _scale_compiled(x, power):
+    return lambda x, power: _vector_scale(x, power)
+
+
 @overload(splat)
 def _splat_compiled(x):
     return lambda x: _broadcast(float(x))
@@ -220,18 +299,22 @@ _define(operator.truediv, _arithmetic("fdiv"))
 
 # "contract" lets LLVM fuse a*b + c; nothing else of fastmath, which would break compensated sums.
 _jit = njit(cache=True, nogil=True, error_model="numpy", fastmath={"contract"})
+_inlined = njit(
+    cache=True, nogil=True, error_model="numpy", fastmath={"contract"}, forceinline=True
+)
 
 
 # ---------------------------------------------------------------- Taylor series
 
 
-@_jit
-def _pair(w, p, n):
+@_inlined
+def _pair(w, p, n, variational):
     """Order n >= 1 of |X|^2, |X|^-3 and X |X|^-3 for pair p; returns the last, x and y.
 
     For q = s^α, n s_0 q_n = Σ_{k=1..n} ((α+1) k - n) s_k q_{n-k} (Jorba & Zou, Proposition 2.1);
-    here α = -3/2 and d_k = k s_k / 2.  Six independent sums, because a fused multiply-add takes
-    four cycles and two can start in each.
+    here α = -3/2 and d_k = k s_k / 2.  When `variational`, also of |X|^-5 (α = -5/2) and of
+    u = 3 X |X|^-5, for which the loop has nearly everything at hand.  Six, or ten, independent
+    sums: a fused multiply-add takes four cycles, and two can start in each.
     """
     x, y = 2 * p, 2 * p + 1
     sx = splat(0.0)
@@ -240,32 +323,51 @@ def _pair(w, p, n):
     qd = splat(0.0)
     fx = splat(0.0)
     fy = splat(0.0)
+    ps = splat(0.0)
+    pd = splat(0.0)
+    ux = splat(0.0)
+    uy = splat(0.0)
     for k in range(1, n):
         xk = load(w, x, k)
         yk = load(w, y, k)
+        sk = load(w, S + p, k)
+        dk = load(w, D + p, k)
         q = load(w, Q + p, n - k)
         sx = sx + xk * load(w, x, n - k)
         sy = sy + yk * load(w, y, n - k)
-        qs = qs + load(w, S + p, k) * q
-        qd = qd + load(w, D + p, k) * q
+        qs = qs + sk * q
+        qd = qd + dk * q
         fx = fx + xk * q
         fy = fy + yk * q
+        if variational:
+            r = load(w, P + p, n - k)
+            ps = ps + sk * r
+            pd = pd + dk * r
+            ux = ux + xk * r
+            uy = uy + yk * r
     x0 = load(w, x, 0)
     y0 = load(w, y, 0)
     xn = load(w, x, n)
     yn = load(w, y, n)
     q0 = load(w, Q + p, 0)
     m = float(n)
+    over = 1.0 / (m * load(w, S + p, 0))
     sn = sx + sy + 2.0 * (x0 * xn + y0 * yn)
     dn = (0.5 * m) * sn
-    qn = splat(0.0) - (m * qs + qd + (m * sn + dn) * q0) / (m * load(w, S + p, 0))
+    qn = splat(0.0) - (m * qs + qd + (m * sn + dn) * q0) * over
     store(w, S + p, n, sn)
     store(w, D + p, n, dn)
     store(w, Q + p, n, qn)
+    if variational:
+        r0 = load(w, P + p, 0)
+        rn = splat(0.0) - (m * ps + 3.0 * pd + (m * sn + 3.0 * dn) * r0) * over
+        store(w, P + p, n, rn)
+        store(w, U + x, n, 3.0 * (ux + x0 * rn + xn * r0))
+        store(w, U + y, n, 3.0 * (uy + y0 * rn + yn * r0))
     return fx + x0 * qn + xn * q0, fy + y0 * qn + yn * q0
 
 
-@_jit
+@_inlined
 def _extend(w, row, n, ax, ay, bx, by, cx, cy):
     """Coefficient n + 2 of the three pairs from order n of X |X|^-3."""
     sx = ax + bx + cx
@@ -279,166 +381,231 @@ def _extend(w, row, n, ax, ay, bx, by, cx, cy):
     store(w, row + 5, n + 2, c * (sy - 3.0 * cy))
 
 
-@_jit
-def _series(w):
-    """Fill coefficients 2..ORDER of all six coordinates from coefficients 0 and 1."""
-    for p in range(3):
-        x = load(w, 2 * p, 0)
-        y = load(w, 2 * p + 1, 0)
-        s = x * x + y * y
-        store(w, S + p, 0, s)
-        store(w, D + p, 0, splat(0.0))
-        store(w, Q + p, 0, 1.0 / (s * root(s)))
-    qa = load(w, Q, 0)
-    qb = load(w, Q + 1, 0)
-    qc = load(w, Q + 2, 0)
-    _extend(
-        w, 0, 0,
-        load(w, 0, 0) * qa, load(w, 1, 0) * qa,
-        load(w, 2, 0) * qb, load(w, 3, 0) * qb,
-        load(w, 4, 0) * qc, load(w, 5, 0) * qc,
-    )  # fmt: skip
-    for n in range(1, ORDER - 1):
-        ax, ay = _pair(w, 0, n)
-        bx, by = _pair(w, 1, n)
-        cx, cy = _pair(w, 2, n)
-        _extend(w, 0, n, ax, ay, bx, by, cx, cy)
+@_inlined
+def _put_gradient(w, p, n, uxx, uxy):
+    """Store order n of G = I |X|^-3 - u X^T; its last entry needs no product of its own.
 
-
-@_jit
-def _pair_gradient(w, p, n):
-    """Order n of G = I |X|^-3 - 3 X X^T |X|^-5 for pair p (same power rule, α = -5/2).
-
-    G_yy needs no product of its own: 3 |X|^2 |X|^-5 = 3 |X|^-3, so u_y y = 3 q - u_x x.
+    3 |X|^2 |X|^-5 = 3 |X|^-3, so u_y y = 3 q - u_x x.
     """
-    x, y, u = 2 * p, 2 * p + 1, U + 2 * p
-    ps = splat(0.0)
-    pd = splat(0.0)
-    ux = splat(0.0)
-    uy = splat(0.0)
-    for k in range(1, n):
-        pk = load(w, P + p, n - k)
-        ps = ps + load(w, S + p, k) * pk
-        pd = pd + load(w, D + p, k) * pk
-        ux = ux + load(w, x, k) * pk
-        uy = uy + load(w, y, k) * pk
-    s0 = load(w, S + p, 0)
-    if n == 0:
-        pn = load(w, Q + p, 0) / s0
-        ux = load(w, x, 0) * pn
-        uy = load(w, y, 0) * pn
-    else:
-        m = float(n)
-        p0 = load(w, P + p, 0)
-        ps = ps + load(w, S + p, n) * p0
-        pd = pd + load(w, D + p, n) * p0
-        pn = splat(0.0) - (m * ps + 3.0 * pd) / (m * s0)
-        ux = ux + load(w, x, 0) * pn + load(w, x, n) * p0
-        uy = uy + load(w, y, 0) * pn + load(w, y, n) * p0
-    store(w, P + p, n, pn)
-    store(w, u, n, 3.0 * ux)
-    store(w, u + 1, n, 3.0 * uy)
-    uxx = splat(0.0)
-    uxy = splat(0.0)
-    for k in range(n + 1):
-        uk = load(w, u, k)
-        uxx = uxx + uk * load(w, x, n - k)
-        uxy = uxy + uk * load(w, y, n - k)
     qn = load(w, Q + p, n)
     store(w, G + 3 * p, n, qn - uxx)
     store(w, G + 3 * p + 1, n, splat(0.0) - uxy)
     store(w, G + 3 * p + 2, n, uxx - 2.0 * qn)
 
 
-@_jit
-def _pair_tangent(w, p, row, n):
-    """Order n of G δX for pair p of the tangent whose series start at `row`."""
-    g = G + 3 * p
-    xx = splat(0.0)
-    xy = splat(0.0)
-    yx = splat(0.0)
-    yy = splat(0.0)
+@_inlined
+def _gradients(w, n):
+    """Order n of the matrices G of all pairs, after `_pair`.
+
+    The pairs share the loop, here and in `_tangent_order`: two sums alone would wait longer for
+    their own last additions than for the loads.
+    """
+    axx = splat(0.0)
+    axy = splat(0.0)
+    bxx = splat(0.0)
+    bxy = splat(0.0)
+    cxx = splat(0.0)
+    cxy = splat(0.0)
     for k in range(n + 1):
-        dx = load(w, row + 2 * p, n - k)
-        dy = load(w, row + 2 * p + 1, n - k)
-        gxy = load(w, g + 1, k)
-        xx = xx + load(w, g, k) * dx
-        xy = xy + gxy * dy
-        yx = yx + gxy * dx
-        yy = yy + load(w, g + 2, k) * dy
-    return xx + xy, yx + yy
+        a = load(w, U, k)
+        b = load(w, U + 2, k)
+        c = load(w, U + 4, k)
+        axx = axx + a * load(w, 0, n - k)
+        axy = axy + a * load(w, 1, n - k)
+        bxx = bxx + b * load(w, 2, n - k)
+        bxy = bxy + b * load(w, 3, n - k)
+        cxx = cxx + c * load(w, 4, n - k)
+        cxy = cxy + c * load(w, 5, n - k)
+    _put_gradient(w, 0, n, axx, axy)
+    _put_gradient(w, 1, n, bxx, bxy)
+    _put_gradient(w, 2, n, cxx, cxy)
+
+
+@_inlined
+def _tangent_order(w, row, n):
+    """Coefficient n + 2 of the tangent whose series start at `row`, from order n of G δX."""
+    a0 = splat(0.0)
+    a1 = splat(0.0)
+    a2 = splat(0.0)
+    a3 = splat(0.0)
+    b0 = splat(0.0)
+    b1 = splat(0.0)
+    b2 = splat(0.0)
+    b3 = splat(0.0)
+    c0 = splat(0.0)
+    c1 = splat(0.0)
+    c2 = splat(0.0)
+    c3 = splat(0.0)
+    for k in range(n + 1):
+        x = load(w, row, n - k)
+        y = load(w, row + 1, n - k)
+        g = load(w, G + 1, k)
+        a0 = a0 + load(w, G, k) * x
+        a1 = a1 + g * y
+        a2 = a2 + g * x
+        a3 = a3 + load(w, G + 2, k) * y
+        x = load(w, row + 2, n - k)
+        y = load(w, row + 3, n - k)
+        g = load(w, G + 4, k)
+        b0 = b0 + load(w, G + 3, k) * x
+        b1 = b1 + g * y
+        b2 = b2 + g * x
+        b3 = b3 + load(w, G + 5, k) * y
+        x = load(w, row + 4, n - k)
+        y = load(w, row + 5, n - k)
+        g = load(w, G + 7, k)
+        c0 = c0 + load(w, G + 6, k) * x
+        c1 = c1 + g * y
+        c2 = c2 + g * x
+        c3 = c3 + load(w, G + 8, k) * y
+    _extend(w, row, n, a0 + a1, a2 + a3, b0 + b1, b2 + b3, c0 + c1, c2 + c3)
+
+
+@_inlined
+def _first(w, variational):
+    """Order 0 of everything that `_pair` computes, and coefficient 2."""
+    for p in range(3):
+        x = load(w, 2 * p, 0)
+        y = load(w, 2 * p + 1, 0)
+        s = x * x + y * y
+        q = 1.0 / (s * root(s))
+        store(w, S + p, 0, s)
+        store(w, D + p, 0, splat(0.0))
+        store(w, Q + p, 0, q)
+        if variational:
+            r = q / s
+            store(w, P + p, 0, r)
+            store(w, U + 2 * p, 0, 3.0 * (x * r))
+            store(w, U + 2 * p + 1, 0, 3.0 * (y * r))
+    a = load(w, Q, 0)
+    b = load(w, Q + 1, 0)
+    c = load(w, Q + 2, 0)
+    _extend(
+        w, 0, 0,
+        load(w, 0, 0) * a, load(w, 1, 0) * a,
+        load(w, 2, 0) * b, load(w, 3, 0) * b,
+        load(w, 4, 0) * c, load(w, 5, 0) * c,
+    )  # fmt: skip
+
+
+@_inlined
+def _pairs(w, n, variational):
+    """Order n of all pairs, and coefficient n + 2 of the coordinates."""
+    ax, ay = _pair(w, 0, n, variational)
+    bx, by = _pair(w, 1, n, variational)
+    cx, cy = _pair(w, 2, n, variational)
+    _extend(w, 0, n, ax, ay, bx, by, cx, cy)
+
+
+@_jit
+def _series(w):
+    """Fill coefficients 2..ORDER of the six coordinates from coefficients 0 and 1."""
+    _first(w, False)
+    for n in range(1, ORDER - 1):
+        _pairs(w, n, False)
 
 
 @_jit
 def _tangent_series(w, tangents):
-    """Series of the first variational equations δX'' = Σ G δX - 3 G δX, after `_series`."""
+    """The same with the first variational equations δX'' = Σ G δX - 3 G δX of the tangents."""
+    _first(w, True)
     for n in range(ORDER - 1):
-        for p in range(3):
-            _pair_gradient(w, p, n)
+        if n > 0:
+            _pairs(w, n, True)
+        _gradients(w, n)
         for i in range(tangents):
-            row = TANGENT + 6 * i
-            ax, ay = _pair_tangent(w, 0, row, n)
-            bx, by = _pair_tangent(w, 1, row, n)
-            cx, cy = _pair_tangent(w, 2, row, n)
-            _extend(w, row, n, ax, ay, bx, by, cx, cy)
+            _tangent_order(w, TANGENT + 6 * i, n)
+
+
+@_inlined
+def _inverse_root(x, n):
+    """x^(-1/n) of each lane to a percent, by the same arithmetic on every machine.
+
+    The bits of a double read as an integer are 2^52 times its logarithm, the mantissa taken as
+    linear; back again, 2^f is 1 + 0.6564 f + 0.3436 f^2 to 0.3 % between whole powers.
+    """
+    y = (1023.0 - bits(x) * 2.0**-52) * (1.0 / n)
+    # Rounds to a whole number: beside 1.5 * 2^52 a double has no room for a fraction.
+    whole = (y + 6755399441055744.0) - 6755399441055744.0
+    f = y - whole
+    below = choose(f, splat(0.0), splat(0.0), splat(1.0))
+    whole = whole - below
+    f = f + below
+    return scale(1.0 + f * (0.6564 + 0.3436 * f), whole)
 
 
 @_jit
-def _natural_step(w, lane):
-    """Step length from the last two coefficients of each pair, relative to that pair."""
-    last = 0.0
-    before = 0.0
+def _natural_steps(w):
+    """Step length of each lane into row H: from the last two coefficients, pair by pair.
+
+    Relative to the pair, not to the largest: in a close approach the short side sets the pace, and
+    keeps its own digits.  Not squared: at 1e-5 the 20th coefficient is of order 1e155.
+    """
+    last = splat(0.0)
+    before = splat(0.0)
     for p in range(3):
         x, y = 2 * p, 2 * p + 1
-        # Not squared: in a passage at 1e-5 the 20th coefficient is of order 1e155.
-        length = math.sqrt(w[S + p, 0, lane])
-        last = max(last, max(abs(w[x, ORDER, lane]), abs(w[y, ORDER, lane])) / length)
-        x_before, y_before = w[x, ORDER - 1, lane], w[y, ORDER - 1, lane]
-        before = max(before, max(abs(x_before), abs(y_before)) / length)
-    # A triple at rest has no odd coefficients; the floor keeps plain Python from log(0).
-    steepest = max(math.log(max(last, 1e-300)) / ORDER, math.log(max(before, 1e-300)) / (ORDER - 1))
-    return SAFETY * math.exp(-steepest)
+        per_length = 1.0 / root(load(w, S + p, 0))
+        for row in (x, y):
+            now = magnitude(load(w, row, ORDER)) * per_length
+            last = choose(last, now, last, now)
+            now = magnitude(load(w, row, ORDER - 1)) * per_length
+            before = choose(before, now, before, now)
+    one = _inverse_root(last, ORDER)
+    other = _inverse_root(before, ORDER - 1)
+    store(w, H, 0, SAFETY * choose(one, other, other, one))
 
 
-@_jit
+@_inlined
 def _advance(w, rows):
     """Move `rows` series (starting at 0, then at TANGENT) to the end of the step in row H."""
     h = load(w, H, 0)
-    for i in range(rows):
+    for i in range(0, rows, 2):
         row = i if i < 6 else TANGENT + i - 6
-        value = load(w, row, ORDER)
-        rate = splat(0.0)
+        x = load(w, row, ORDER)
+        y = load(w, row + 1, ORDER)
+        u = splat(0.0)
+        v = splat(0.0)
         for k in range(ORDER - 1, -1, -1):
-            rate = rate * h + value
-            value = value * h + load(w, row, k)
-        store(w, row, 0, value)
-        store(w, row, 1, rate)
+            u = u * h + x
+            v = v * h + y
+            x = x * h + load(w, row, k)
+            y = y * h + load(w, row + 1, k)
+        store(w, row, 0, x)
+        store(w, row, 1, u)
+        store(w, row + 1, 0, y)
+        store(w, row + 1, 1, v)
 
 
 @_jit
-def _close_triangle(w, lane, tangents):
+def _close_triangles(w, tangents):
     """Restore A + B + C = 0: the longest side becomes minus the sum of the others.
 
     Rounding alone moves the sum by an ulp a step, which then drifts; left alone it spoilt the
-    figure-eight by 1e-4 within 1,000 periods.
+    figure-eight by 1e-4 within 1,000 periods.  The least squared side goes to row H on the way.
     """
-    long = 0
-    for p in range(1, 3):
-        if (
-            w[2 * p, 0, lane] ** 2 + w[2 * p + 1, 0, lane] ** 2
-            > w[2 * long, 0, lane] ** 2 + w[2 * long + 1, 0, lane] ** 2
-        ):
-            long = p
-    i = 2 * long
-    j = (i + 2) % 6
-    k = (i + 4) % 6
+    a = load(w, 0, 0) * load(w, 0, 0) + load(w, 1, 0) * load(w, 1, 0)
+    b = load(w, 2, 0) * load(w, 2, 0) + load(w, 3, 0) * load(w, 3, 0)
+    c = load(w, 4, 0) * load(w, 4, 0) + load(w, 5, 0) * load(w, 5, 0)
+    longest = choose(a, b, a, b)
+    longest = choose(longest, c, longest, c)
+    least = choose(a, b, b, a)
+    store(w, H, 1, choose(least, c, c, least))
+    zero = splat(0.0)
     for block in range(tangents + 1):
         row = 0 if block == 0 else TANGENT + 6 * (block - 1)
         for axis in range(2):
             for term in range(2):
-                w[row + i + axis, term, lane] = -(
-                    w[row + j + axis, term, lane] + w[row + k + axis, term, lane]
-                )
+                # One after the other: of two equally long sides only the first is changed.
+                x = load(w, row + axis, term)
+                y = load(w, row + 2 + axis, term)
+                z = load(w, row + 4 + axis, term)
+                x = choose(a, longest, zero - (y + z), x)
+                y = choose(b, longest, zero - (z + x), y)
+                z = choose(c, longest, zero - (x + y), z)
+                store(w, row + axis, term, x)
+                store(w, row + 2 + axis, term, y)
+                store(w, row + 4 + axis, term, z)
 
 
 # ---------------------------------------------------------------- events
@@ -742,15 +909,17 @@ def flow(w, x, d, times, nearest, max_steps, status, steps):
                 following += 1
         if running == 0:
             return
-        _series(w)
         if m > 0:
             _tangent_series(w, m)
+        else:
+            _series(w)
+        _natural_steps(w)
         for lane in range(LANES):
             i = who[lane]
             if i < 0:
                 w[H, 0, lane] = 0.0
                 continue
-            h = _natural_step(w, lane)
+            h = w[H, 0, lane]
             left = (times[i] - now[lane]) + lost[lane]
             if not h < abs(left):
                 w[H, 0, lane] = left
@@ -759,11 +928,11 @@ def flow(w, x, d, times, nearest, max_steps, status, steps):
             w[H, 0, lane] = h if left > 0.0 else -h
             steps[i] += 1
         _advance(w, 6 + 6 * m)
+        _close_triangles(w, m)
         for lane in range(LANES):
             i = who[lane]
             if i < 0:
                 continue
-            _close_triangle(w, lane, m)
             # Kahan's sum: `lost` is what the rounded clock is ahead of the true one.
             h = w[H, 0, lane] - lost[lane]
             clock = now[lane] + h
@@ -772,12 +941,10 @@ def flow(w, x, d, times, nearest, max_steps, status, steps):
             done = steps[i] < 0
             if done:
                 steps[i] = -steps[i]
-            for p in range(3):
-                # Negated, so that a state of NaN (two bodies in one place) counts as well.
-                r2 = w[2 * p, 0, lane] ** 2 + w[2 * p + 1, 0, lane] ** 2
-                if not r2 >= nearest[i] ** 2:
-                    status[i] = STATUS_COLLISION
-                    done = True
+            # Negated, so that a state of NaN (two bodies in one place) counts as well.
+            if not w[H, 1, lane] >= nearest[i] ** 2:
+                status[i] = STATUS_COLLISION
+                done = True
             if not done and steps[i] >= max_steps:
                 status[i] = STATUS_BUDGET
                 done = True
@@ -883,12 +1050,11 @@ def _record(series, e, lane, table, start, h, end, state, roots, count, kinds, w
 
 
 @_jit
-def _lane_status(state, nearest, steps, max_steps):
+def _lane_status(state, least, nearest, steps, max_steps):
     """STATUS_DONE while a start may go on, else why it must end."""
-    for p in range(3):
-        # Written so that NaN, from a passage through a collision, is one too.
-        if not state[2 * p] ** 2 + state[2 * p + 1] ** 2 >= nearest**2:
-            return STATUS_COLLISION
+    # Written so that NaN, from a passage through a collision, is one too.
+    if not least >= nearest**2:
+        return STATUS_COLLISION
     if _escapes(state):
         return STATUS_ESCAPE
     return STATUS_BUDGET if steps >= max_steps else STATUS_DONE
@@ -936,13 +1102,13 @@ def scan(w, x, times, nearest, max_steps, status, steps, counts, kinds, when, fi
         if running == 0:
             return
         _series(w)
+        _natural_steps(w)
         for lane in range(LANES):
-            w[H, 0, lane] = _natural_step(w, lane) if who[lane] >= 0 else 0.0
+            if who[lane] < 0:
+                w[H, 0, lane] = 0.0
         before = w[:6, :2].copy()
         _advance(w, 6)
-        for lane in range(LANES):
-            if who[lane] >= 0:
-                _close_triangle(w, lane, 0)
+        _close_triangles(w, 0)
         _step_events(w, table)
         for lane in range(LANES):
             i = who[lane]
@@ -963,7 +1129,7 @@ def scan(w, x, times, nearest, max_steps, status, steps, counts, kinds, when, fi
                 )  # fmt: skip
             now[lane] += h
             _get(w, lane, state)
-            status[i] = _lane_status(state, nearest[i], steps[i], max_steps)
+            status[i] = _lane_status(state, w[H, 1, lane], nearest[i], steps[i], max_steps)
             if counts[i] > kinds.shape[1]:
                 counts[i] = kinds.shape[1]
                 status[i] = STATUS_BUDGET
@@ -1008,12 +1174,13 @@ def track(w, x, time, nearest, times, series):
     while n < series.shape[0]:
         _series(w)
         series[n] = w[:6, :, 0]
-        h = _natural_step(w, 0)
+        _natural_steps(w)
+        h = w[H, 0, 0]
         left = (time - times[n]) + lost
         last = not h < left
         w[H, 0, 0] = left if last else h
         _advance(w, 6)
-        _close_triangle(w, 0, 0)
+        _close_triangles(w, 0)
         _get(w, 0, x)
         h = w[H, 0, 0] - lost
         times[n + 1] = times[n] + h
@@ -1022,9 +1189,8 @@ def track(w, x, time, nearest, times, series):
         if last:
             times[n] = time
             status = STATUS_DONE
-        for p in range(3):
-            if not x[2 * p] ** 2 + x[2 * p + 1] ** 2 >= nearest**2:
-                status = STATUS_COLLISION
+        if not w[H, 1, 0] >= nearest**2:
+            status = STATUS_COLLISION
         if last or status == STATUS_COLLISION:
             break
         if _escapes(x):
