@@ -1,9 +1,4 @@
-"""From a guess to an orbit with its verdict: the shortest arc, both starts, every check.
-
-Two moments of an orbit's period are fixed by reversing symmetries, up to its own symmetries: the
-start and the end of its shortest arc between start sets.  So an orbit has at most two starts, and
-the shortest arc, a half to a twelfth of the period, is also the best conditioned way to its digits.
-"""
+"""From a guess to an orbit with its verdict, and in words where the guess led."""
 
 from __future__ import annotations
 
@@ -12,41 +7,22 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from orbitsearch import flow
+from orbitsearch import bodies, flow
+from orbitsearch.complete import Arc, complete, ends, shoot_arcs
 from orbitsearch.errors import BadRequest
-from orbitsearch.orbit import Orbit, Solution, Start, Status, Verdict
-from orbitsearch.shoot import REASONS, Shots, shoot
-from orbitsearch.starts import CONDITIONS, StartSet, period_multiple, set_of, start_set
+from orbitsearch.orbit import Orbit, Solution, Status, Verdict
+from orbitsearch.starts import CONDITIONS, StartSet, period_multiple, start_set
 from orbitsearch.verify import verify
 
-__all__ = ["Arc", "Refinement", "complete", "make_arc", "refine", "verify_as_given"]
+__all__ = ["Refinement", "refine", "verify_as_given"]
 
 Array = NDArray[np.float64]
 
-# An event whose residuals are below this may be an earlier end of the arc; Newton then decides.
-NEARLY_FIXED = 1e-3
-# How far Newton may move a start that is already refined, and still have found the same orbit.
-SAME_START = 1e-7
 # Share of the period within which an arc's end may lie from where the guess puts it.
 TIMING = 0.03
 # A guess counts as answered by another orbit when a parameter or the period moved by more.
 ELSEWHERE = 1e-3
 ELSEWHERE_PERIOD = 1e-2
-
-
-@dataclass(frozen=True)
-class Arc:
-    """A refined arc: from the start (p, q) of a set over `time` to the end condition `kind`."""
-
-    p: float
-    q: float
-    time: float
-    kind: int
-    solution: Solution
-
-    def period(self, starts: StartSet) -> float:
-        """Period of the orbit that the arc generates."""
-        return period_multiple(starts.own, CONDITIONS[self.kind]) * self.time
 
 
 @dataclass(frozen=True)
@@ -76,121 +52,13 @@ class Refinement:
         return self.solution.status if self.orbit is None else self.orbit.status
 
 
-def make_arc(shots: Shots, i: int, kind: int) -> Arc:
-    """Arc number i of a batch of shots with end condition `kind`."""
-    scale = max(abs(float(shots.p[i])), abs(float(shots.q[i])))
-    error = max(float(shots.error[i]), np.finfo(float).eps * scale)
-    solution = Solution(
-        status=shots.status[i],
-        reason=REASONS[shots.status[i]],
-        condition=CONDITIONS[kind].label,
-        residual=float(shots.residual[i]),
-        iterations=int(shots.iterations[i]),
-        steps=int(shots.steps[i]),
-        digits=float(-np.log10(error / scale)) if np.isfinite(error) else 0.0,
-    )
-    return Arc(float(shots.p[i]), float(shots.q[i]), float(shots.time[i]), kind, solution)
+def _standard(
+    starts: StartSet, p: float, q: float, period: float
+) -> tuple[float, float, float, str]:
+    """The guess in standard form, with a note when that is not how it was given.
 
-
-def _shoot(
-    starts: StartSet, guesses: list[tuple[int, float, float, float]], reach: float
-) -> list[Arc]:
-    """Arcs from guesses (kind, p, q, time), whatever their status."""
-    if not guesses:
-        return []
-    kinds, p, q, time = (np.array(column) for column in zip(*guesses, strict=True))
-    shots = shoot(starts, kinds.astype(np.int64), p, q, time, reach=reach)
-    return [make_arc(shots, i, int(kinds[i])) for i in range(len(guesses))]
-
-
-def _ends(events: flow.Events, before: float) -> list[tuple[float, int, float]]:
-    """(time, kind, largest residual) of every event that a condition is looked for at."""
-    found = []
-    for condition in CONDITIONS.values():
-        mine = (events.functions == condition.event) & (events.times < before)
-        residuals = np.abs(condition.residuals(events.states[mine])).max(axis=-1, initial=0.0)
-        found += [
-            (float(t), condition.kind, float(r))
-            for t, r in zip(events.times[mine], residuals, strict=True)
-        ]
-    return found
-
-
-def _shortest(starts: StartSet, arc: Arc) -> Arc:
-    """The shortest arc of the same orbit from the same start: itself, or one that ends earlier."""
-    x = starts.states(np.array([arc.p]), np.array([arc.q]))[0]
-    trajectory = flow.track(x, arc.time)
-    if trajectory.status is not Status.CONVERGED:
-        return arc
-    earlier = [
-        (kind, arc.p, arc.q, time)
-        for time, kind, residual in _ends(trajectory.events, arc.time * (1 - 1e-6))
-        if residual < NEARLY_FIXED
-    ]
-    better = [
-        other
-        for other in _shoot(starts, earlier, reach=SAME_START)
-        if other.solution.status is Status.CONVERGED and other.time < arc.time * (1 - 1e-6)
-    ]
-    return min(better, key=lambda other: other.time, default=arc)
-
-
-def _other_start(starts: StartSet, arc: Arc) -> Start | None:
-    """The start at the far end of a shortest arc, refined from there in its own set."""
-    end = CONDITIONS[arc.kind]
-    there = set_of(end)
-    x = starts.states(np.array([arc.p]), np.array([arc.q]))
-    last = flow.propagate(x, arc.time).states[0]
-    p, q, unit = there.parameters_of(last, end.body)
-    # Seen from there the arc runs back to the condition it came from; standard form may have
-    # exchanged the labels, so each body of that set is tried.
-    back = [
-        (condition.kind, p, q, arc.time / unit**1.5)
-        for condition in set_of(starts.own).conditions()
-    ]
-    tried = [
-        other
-        for other in _shoot(there, back, reach=1e-5)
-        if other.solution.status is Status.CONVERGED
-    ]
-    if not tried:
-        return None
-    best = min(tried, key=lambda other: max(abs(other.p - p), abs(other.q - q)))
-    return Start.from_floats(there.name, best.p, best.q, best.period(there))
-
-
-def complete(starts: StartSet, arc: Arc) -> Orbit | Verdict:
-    """Everything about the orbit that a converged arc generates, with its verdict.
-
-    Returns
-    -------
-    Orbit
-        Refined over its shortest arc, with both its starts.
-    Verdict
-        When it cannot be followed over its period.
+    Papers choose signs and labels in their own ways; only what has no standard form is refused.
     """
-    shortest = _shortest(starts, arc)
-    found = verify(starts, shortest.p, shortest.q, shortest.time, shortest.kind)
-    if isinstance(found, Verdict):
-        return found
-    other = _other_start(starts, shortest)
-    listed = (found.start,) if other is None else _distinct(found.start, other)
-    solution = replace(
-        shortest.solution,
-        iterations=arc.solution.iterations + shortest.solution.iterations * (shortest is not arc),
-        moved=arc.solution.moved,
-        period_moved=arc.solution.period_moved,
-    )
-    return replace(found, starts=listed, solution=solution)
-
-
-def _distinct(first: Start, other: Start) -> tuple[Start, ...]:
-    """Both starts, or one where the orbit comes back to the same standard form."""
-    same = first.kind == other.kind and max(abs(first.p - other.p), abs(first.q - other.q)) < 1e-6
-    return (first,) if same else (first, other)
-
-
-def _check_guess(starts: StartSet, p: float, q: float, period: float) -> None:
     names = (*starts.letters, "period")
     for name, value in zip(names, (p, q, period), strict=True):
         if not np.isfinite(value):
@@ -199,18 +67,24 @@ def _check_guess(starts: StartSet, p: float, q: float, period: float) -> None:
         raise BadRequest(
             f"`period` must be positive: {period}; give the period at the start's scale"
         )
-    at = np.array([p]), np.array([q])
-    if not starts.inside(*at)[0]:
+    given = f"`{starts.letters[0]}`, `{starts.letters[1]}` = {p}, {q}"
+    with np.errstate(all="ignore"):
+        x = starts.states(np.array([p]), np.array([q]))[0]
+        energy = float(bodies.energy(x))
+        if not starts.inside(np.array([p]), np.array([q]))[0]:
+            p, q, unit = starts.parameters_of(x, starts.own.body)
+            period /= unit**1.5
+    if not (np.isfinite(period) and starts.inside(np.array([p]), np.array([q]))[0]):
         raise BadRequest(
-            f"`{starts.letters[0]}`, `{starts.letters[1]}` = {p}, {q} lie outside the domain of"
-            f" {starts.name} starts; its standard form is described by `orbitsearch starts`"
+            f"{given} lie outside the domain of {starts.name} starts; its standard form is"
+            " described by `orbitsearch starts`"
         )
-    energy = float(starts.energies(*at)[0])
-    if energy >= 0:
+    if not energy < 0:
         raise BadRequest(
-            f"`{starts.letters[0]}`, `{starts.letters[1]}` = {p}, {q} must be bound, E < 0:"
-            f" E = {energy:.6g}; choose smaller velocities"
+            f"{given} must be bound, E < 0: E = {energy:.6g}; choose smaller velocities"
         )
+    moved = given != f"`{starts.letters[0]}`, `{starts.letters[1]}` = {p}, {q}"
+    return p, q, period, f"in standard form {p:.10g} {q:.10g}, T = {period:.10g}; " * moved
 
 
 def refine(start: str, p: float, q: float, period: float, *, reach: float = 0.05) -> Refinement:
@@ -221,7 +95,8 @@ def refine(start: str, p: float, q: float, period: float, *, reach: float = 0.05
     start : str
         Name of the start set.
     p, q : float
-        Guess of its two parameters; five digits of a published table are typical.
+        Guess of its two parameters; five digits of a published table are typical.  Signs or labels
+        other than those of standard form are brought to it.
     period : float
         Guess of the period, good to a few parts in a hundred.
     reach : float
@@ -237,26 +112,26 @@ def refine(start: str, p: float, q: float, period: float, *, reach: float = 0.05
         For numbers that are not finite, a period that is not positive, an unknown or unbound start.
     """
     starts = start_set(start)
-    _check_guess(starts, p, q, period)
+    p, q, period, note = _standard(starts, p, q, period)
     x = starts.states(np.array([p]), np.array([q]))[0]
     trajectory = flow.track(x, 0.5 * period * (1 + TIMING))
     guesses = [(starts.own.kind, p, q, 0.5 * period)]
-    for time, kind, _ in _ends(trajectory.events, np.inf):
+    for time, kind, _ in ends(trajectory.events, np.inf):
         multiple = period_multiple(starts.own, CONDITIONS[kind])
         if abs(multiple * time / period - 1.0) < TIMING:
             guesses.append((kind, p, q, time))
-    arcs = [_moved(starts, arc, p, q, period) for arc in _shoot(starts, guesses, reach=reach)]
+    arcs = [_moved(starts, arc, p, q, period) for arc in shoot_arcs(starts, guesses, reach=reach)]
     good = [arc for arc in arcs if arc.solution.status is Status.CONVERGED]
     if not good:
         solution = arcs[0].solution
-        return Refinement(solution, None, False, f"no orbit found: {solution.reason}")
+        return Refinement(solution, None, False, f"{note}no orbit found: {solution.reason}")
     arc = min(good, key=lambda a: _distance(a.solution))
     orbit = complete(starts, arc)
     if isinstance(orbit, Verdict):
         solution = replace(arc.solution, status=orbit.status, reason=orbit.reason)
-        return Refinement(solution, None, False, f"no orbit found: {orbit.reason}")
+        return Refinement(solution, None, False, f"{note}no orbit found: {orbit.reason}")
     solution = _moved_to(orbit, p, q, period)
-    return _answer(replace(orbit, solution=solution), solution)
+    return _answer(replace(orbit, solution=solution), solution, note)
 
 
 def verify_as_given(start: str, p: float, q: float, period: float) -> Orbit | Verdict:
@@ -272,7 +147,7 @@ def verify_as_given(start: str, p: float, q: float, period: float) -> Orbit | Ve
         When the motion cannot be followed over the period.
     """
     starts = start_set(start)
-    _check_guess(starts, p, q, period)
+    p, q, period, _ = _standard(starts, p, q, period)
     return verify(starts, p, q, 0.5 * period, starts.own.kind)
 
 
@@ -292,7 +167,7 @@ def _moved_to(orbit: Orbit, p: float, q: float, period: float) -> Solution:
     return replace(orbit.solution, moved=moved, period_moved=orbit.period / period - 1.0)
 
 
-def _answer(orbit: Orbit, solution: Solution) -> Refinement:
+def _answer(orbit: Orbit, solution: Solution, note: str) -> Refinement:
     """Put in words where the guess led."""
     elsewhere = solution.moved > ELSEWHERE or abs(solution.period_moved) > ELSEWHERE_PERIOD
     times = 1.0 / (1.0 + solution.period_moved)
@@ -310,4 +185,4 @@ def _answer(orbit: Orbit, solution: Solution) -> Refinement:
         )
     if orbit.status is not Status.VERIFIED:
         message = f"{orbit.status}: {orbit.verdict.reason}; {message}"
-    return Refinement(solution, orbit, elsewhere, message)
+    return Refinement(solution, orbit, elsewhere, note + message)

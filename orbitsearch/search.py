@@ -12,27 +12,23 @@ finishes first.
 from __future__ import annotations
 
 import math
-import multiprocessing
-import os
-import signal
-import threading
 from collections import Counter, deque
 from collections.abc import Callable, Generator, Iterator
-from concurrent.futures import Executor, Future, ProcessPoolExecutor
-from concurrent.futures.process import BrokenProcessPool
-from contextlib import contextmanager
+from concurrent.futures import Executor, Future
 from dataclasses import asdict, dataclass, field
 from typing import Any
 
 import numpy as np
 
 from orbitsearch import flow
-from orbitsearch.errors import BadRequest, OrbitsearchError
+from orbitsearch.complete import Arc, complete, make_arc
+from orbitsearch.errors import BadRequest
 from orbitsearch.orbit import Orbit, Start, Status, Verdict
-from orbitsearch.refine import Arc, complete, make_arc, refine
+from orbitsearch.refine import refine
 from orbitsearch.scan import candidates, scan
 from orbitsearch.shoot import shoot
 from orbitsearch.starts import CONDITIONS, StartSet, start_set
+from orbitsearch.workers import check_workers, result_of, worker_pool
 
 __all__ = [
     "Candidate",
@@ -243,72 +239,12 @@ def _complete(start: str, arc: Arc) -> Orbit | Verdict:
     return complete(start_set(start), arc)
 
 
-def _start_worker() -> None:
-    # Ctrl-C goes to every process of the terminal; the parent alone decides what it means.
-    signal.signal(signal.SIGINT, signal.SIG_IGN)
-    threading.Thread(target=_end_with_parent, daemon=True).start()
-
-
-def _end_with_parent() -> None:
-    # A killed parent cannot tell its workers, and they hold both ends of the pipe they wait on.
-    parent = multiprocessing.parent_process()
-    if parent is not None:
-        parent.join()
-    os._exit(1)
-
-
-class _Inline(Executor):
-    """Executor that runs a task when it is submitted: no processes, for one worker."""
-
-    def submit(self, fn: Callable[..., Any], /, *args: Any, **kwargs: Any) -> Future[Any]:
-        """Run the task at once."""
-        future: Future[Any] = Future()
-        future.set_result(fn(*args, **kwargs))
-        return future
-
-
 def _warm_up() -> None:
     """Compile every kernel here, so that the workers load them instead of each compiling them."""
     starts = start_set("collinear")
     corner = np.array([0.34, 0.35])
     scan(starts, corner, corner, 1.0)
     refine("collinear", 0.34712, 0.53272, 6.32591)
-
-
-@contextmanager
-def _pool(workers: int) -> Iterator[Executor]:
-    if workers == 1:
-        yield _Inline()
-        return
-    _warm_up()
-    # Spawned, not forked: the same on every system, and safe beside threads of a notebook.
-    pool = ProcessPoolExecutor(
-        workers, multiprocessing.get_context("spawn"), initializer=_start_worker
-    )
-    try:
-        yield pool
-    finally:
-        pool.shutdown(wait=True, cancel_futures=True)
-
-
-def _result(future: Future[Any]) -> Any:
-    try:
-        return future.result()
-    except BrokenProcessPool:
-        raise OrbitsearchError(
-            "a worker process died (out of memory?); what was found so far is kept: run the search"
-            " again, with fewer `--workers` or a smaller `--grid`"
-        ) from None
-
-
-def check_workers(workers: int | None) -> int:
-    """Number of worker processes: as given, or the cores this process may use."""
-    if workers is None:
-        usable = getattr(os, "sched_getaffinity", None)
-        return len(usable(0)) if usable else os.cpu_count() or 1
-    if workers < 1:
-        raise BadRequest(f"`workers` must be at least 1: {workers}")
-    return workers
 
 
 class _Search:
@@ -360,7 +296,7 @@ class _Search:
         """Verified orbits in the order they were sent, those that are ready or all."""
         while self.under_way and (wait or self.under_way[0][1].done()):
             start, future = self.under_way.popleft()
-            outcome = _result(future)
+            outcome = result_of(future)
             verdict = outcome if isinstance(outcome, Verdict) else outcome.verdict
             if isinstance(outcome, Verdict) or verdict.status is Status.REJECTED:
                 self.counts["rejected"] += 1
@@ -411,7 +347,9 @@ def search(
         Last, with the counts of everything.
     """
     workers = check_workers(workers)
-    with _pool(workers) as pool:
+    if workers > 1:
+        _warm_up()
+    with worker_pool(workers) as pool:
         run = _Search(request, known, pool)
         pending: deque[tuple[int, Future[_Tile]]] = deque()
         following = 0
@@ -421,7 +359,7 @@ def search(
                 pending.append((following, pool.submit(_scan_tile, request, following)))
                 following += 1
             tile, future = pending.popleft()
-            yield from run.take_tile(tile, _result(future))
+            yield from run.take_tile(tile, result_of(future))
             yield from run.take_orbits(wait=False)
         yield from run.take_orbits(wait=True)
     yield Finished(run.counts)

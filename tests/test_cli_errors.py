@@ -60,7 +60,7 @@ BAD_SEARCHES = {
 
 BAD_GUESSES = {
     "unbound": (("collinear", 0.9, 0.9, 6), "`a`, `b` = 0.9, 0.9 must be bound, E < 0: E = 2.36"),
-    "outside": (("collinear", -0.3, 0.5, 6), "`a`, `b` = -0.3, 0.5 lie outside the domain"),
+    "outside": (("rest", 0.3, 0.0, 6), "`x`, `y` = 0.3, 0.0 lie outside the domain"),
     "not a number": (("isosceles", "nan", 0.1, 6), "`eta` must be a finite number: nan"),
     "infinite": (("rest", 0.1, "inf", 6), "`y` must be a finite number: inf"),
     "period nan": (("collinear", 0.3, 0.5, "nan"), "`period` must be a finite number: nan"),

@@ -21,6 +21,7 @@ FLOORS: tuple[dict[str, tuple[str, ...]], ...] = (
     {"errors": ("errors",), "kernels": ("_kernels",)},
     {
         "words": ("words", "_letters"),
+        "workers": ("workers",),
         "bodies": ("bodies",),
         "migrations": ("migrations",),
         "orbit": ("orbit", "records"),
@@ -48,6 +49,7 @@ FLOORS: tuple[dict[str, tuple[str, ...]], ...] = (
         "symmetry": ("symmetry", "crossings"),
     },
     {"verify": ("verify",)},
+    {"complete": ("complete",)},
     {"refine": ("refine",)},
     {"search": ("search",)},
     {"runs": ("runs",)},

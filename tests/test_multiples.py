@@ -20,7 +20,7 @@ from orbitsearch.verify import verify
 KIND = {condition.label: kind for kind, condition in CONDITIONS.items()}
 
 # (start set, end condition): parameters and time of the arc, guesses found with this tool by scans
-# of the sets' own windows, but for the ends in brackets, which are from published orbits: the
+# of the sets' own windows for arcs to that end, T* up to 80.  The marked ones are published: the
 # figure-eight (C. Moore 1993) and two rest starts (X. Li & S. Liao 2019).
 SEEDS = {
     ("collinear", "C1"): (0.347117, 0.532725, 1.054319),  # figure-eight
@@ -29,7 +29,7 @@ SEEDS = {
     ("collinear", "I1"): (0.568991, 0.449429, 4.330378),
     ("collinear", "I2"): (0.347117, 0.532725, 0.527159),  # figure-eight
     ("collinear", "I3"): (0.306893, 0.125507, 1.558669),
-    ("collinear", "rest"): (0.813351, 0.389952, 553.9615),
+    ("collinear", "rest"): (0.6414776, 0.3753471, 16.578971),
     ("collinear", "P"): (0.0620144, 0.2547877, 2.522518),
     ("isosceles", "C1"): (1.565497, 0.137264, 2.598462),  # figure-eight
     ("isosceles", "C2"): (2.112080, 0.0956656, 14.260415),
@@ -39,7 +39,10 @@ SEEDS = {
     ("isosceles", "I3"): (0.324929, 0.354222, 4.298822),
     ("isosceles", "rest"): (0.4585038, 0.0673899, 3.587248),
     ("isosceles", "P"): (0.324929, 0.354222, 2.149411),
-    ("rest", "C1"): (0.3279261, 0.2121535, 0.566567),
+    ("rest", "C1"): (0.1938234, 0.6063751, 1.912057),
+    ("rest", "C2"): (0.1954621, 0.5474236, 1.936317),
+    ("rest", "C3"): (0.0648682, 0.4860255, 1.663068),
+    ("rest", "I1"): (0.2114010, 0.3510806, 1.878114),
     ("rest", "I2"): (0.1846729, 0.5753741, 1.289660),
     ("rest", "I3"): (0.1549011, 0.6460870, 1.189463),
     ("rest", "rest"): (0.0207067, 0.3133550, 1.087048),  # Li & Liao
@@ -54,7 +57,9 @@ SEEDS = {
     ("perpendicular", "P"): (0.811066, 1.537893, 2.157487),
 }
 
-CLOSED, APART = 1e-4, 0.05
+# Over the size of the orbit.  Some have multipliers of 1e8, of which DOP853 feels the root: most
+# close to 1e-9, the worst to 1e-4.
+CLOSED, APART = 1e-3, 0.05
 
 
 def plane(kind: str, angle: float) -> np.ndarray:
@@ -85,7 +90,7 @@ def order(one: Reversal, other: Reversal) -> int:
     raise AssertionError("of no finite order")
 
 
-@pytest.mark.parametrize(("start", "end"), product(START_SETS, KIND))
+@pytest.mark.parametrize(("start", "end"), [*product(START_SETS, KIND)])
 def test_multiples_are_twice_the_order_of_the_two_reversals(start, end) -> None:
     own, condition = START_SETS[start].own, CONDITIONS[KIND[end]]
     assert period_multiple(own, condition) == 2 * order(own.reversal, condition.reversal)
@@ -105,7 +110,7 @@ def off(begin: np.ndarray, end: np.ndarray, fit: bool) -> tuple[float, float]:
     return float(max(gap[0] / size, gap[1] * math.sqrt(size))), angle
 
 
-@pytest.mark.parametrize(("start", "end"), SEEDS)
+@pytest.mark.parametrize(("start", "end"), list(SEEDS))
 def test_the_multiple_closes_a_real_orbit_and_no_part_of_it_does(start, end) -> None:
     p, q, t = SEEDS[start, end]
     starts, kind = START_SETS[start], KIND[end]
@@ -114,35 +119,23 @@ def test_the_multiple_closes_a_real_orbit_and_no_part_of_it_does(start, end) -> 
     assert shots.time[0] == pytest.approx(t, rel=1e-4)
     period = period_multiple(starts.own, CONDITIONS[kind]) * shots.time[0]
     begin = np.stack(bodies.sides_to_bodies(starts.states(shots.p, shots.q)[0]))
-    times = [period / 3, period / 2, period]
-    path = dop853(*begin, period, t_eval=times).y.T.reshape(3, 2, 3, 2)
+    # Half the period forwards and half backwards: where both meet, the orbit is closed, and errors
+    # grow with the root of its largest multiplier only.
+    path = dop853(*begin, period / 2, t_eval=[period / 3, period / 2]).y.T.reshape(2, 2, 3, 2)
+    back = dop853(*begin, -period / 2).y[:, -1].reshape(2, 3, 2)
     relative = starts.own.reversal.plane == CONDITIONS[kind].reversal.plane == "mirror"
-    closure, angle = off(begin, path[2], fit=relative)
+    closure, angle = off(back, path[1], fit=relative)
     assert closure < CLOSED
-    for part in path[:2]:
+    for part in path:
         assert off(begin, part, fit=True)[0] > APART
     orbit = verify(starts, shots.p[0], shots.q[0], shots.time[0], kind)
     assert isinstance(orbit, Orbit)
     assert orbit.status in (Status.VERIFIED, Status.NOT_CONFIRMED)
     assert math.remainder(orbit.rotation - angle, 2 * math.pi) == pytest.approx(0.0, abs=CLOSED)
+    # Only two mirrors turn an orbit, and two mirrors do unless by chance.
+    assert (abs(orbit.rotation) > 0.01) is relative
 
 
-def test_only_pairs_of_mirrors_turn_the_orbit() -> None:
-    turning = set()
-    for (start, end), (p, q, t) in SEEDS.items():
-        starts = START_SETS[start]
-        shots = shoot(starts, *(np.array([v]) for v in (KIND[end], p, q, t)), reach=1e-3)
-        orbit = verify(starts, shots.p[0], shots.q[0], shots.time[0], KIND[end])
-        if abs(orbit.rotation) > 0.01:
-            turning.add((start, end))
-    mirrors = set(product(("isosceles", "perpendicular"), ("I1", "I2", "I3", "P")))
-    assert turning == mirrors
-
-
-# Pairs of which no orbit is known here, with what was tried.
-UNSEEN: dict[tuple[str, str], str] = {}
-
-
-def test_every_pair_has_an_orbit_or_is_listed_as_unseen() -> None:
-    assert SEEDS.keys() | UNSEEN.keys() == set(product(START_SETS, KIND))
-    assert not SEEDS.keys() & UNSEEN.keys()
+def test_every_pair_has_its_orbit() -> None:
+    # None is missing: a new start set has to bring orbits for its pairs, or to say what was tried.
+    assert SEEDS.keys() == set(product(START_SETS, KIND))

@@ -23,9 +23,9 @@ from orbitsearch.search import (
     Rejected,
     SearchRequest,
     TileDone,
-    check_workers,
     search,
 )
+from orbitsearch.workers import check_workers
 
 # Four tiles with collisions, escapes, repetitions and orbits beyond T*.
 WINDOW = SearchRequest("collinear", (0.0, 0.6, 0.0, 0.6), (30, 30), 30.0)

@@ -51,7 +51,8 @@ def _request(options: Namespace) -> SearchRequest:
 def search(options: Namespace) -> int:
     """Search a window, file what is found, print counts and a table."""
     from orbitsearch.runs import Filed, Known, run_search
-    from orbitsearch.search import Finished, TileDone, check_workers
+    from orbitsearch.search import Finished, TileDone
+    from orbitsearch.workers import check_workers
 
     request = _request(options)
     workers = check_workers(options.workers)
@@ -67,8 +68,8 @@ def search(options: Namespace) -> int:
             with closing(run_search(catalog, request, workers=workers)) as events:
                 for event in events:
                     if isinstance(event, TileDone):
-                        bar.set_description("searching")
                         bar.update()
+                        bar.set_description("searching" if bar.n < request.tiles else "verifying")
                     elif isinstance(event, Filed):
                         if event.new:
                             new[event.id] = event.orbit
