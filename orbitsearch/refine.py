@@ -23,6 +23,8 @@ TIMING = 0.03
 # A guess counts as answered by another orbit when a parameter or the period moved by more.
 ELSEWHERE = 1e-3
 ELSEWHERE_PERIOD = 1e-2
+# Longest T* that is worth a try in double precision.
+LONGEST = 10_000.0
 
 
 @dataclass(frozen=True)
@@ -67,6 +69,7 @@ def _standard(
         raise BadRequest(
             f"`period` must be positive: {period}; give the period at the start's scale"
         )
+    given_period = period
     given = f"`{starts.letters[0]}`, `{starts.letters[1]}` = {p}, {q}"
     with np.errstate(all="ignore"):
         x = starts.states(np.array([p]), np.array([q]))[0]
@@ -83,10 +86,17 @@ def _standard(
         raise BadRequest(
             f"{given} must be bound, E < 0: E = {energy:.6g}; choose smaller velocities"
         )
+    scaled = given_period * abs(energy) ** 1.5
+    if not scaled <= LONGEST:
+        raise BadRequest(
+            f"`period` must be at most T* = {LONGEST:g}: {given_period:g} is T* = {scaled:.6g};"
+            " give one turn round the orbit"
+        )
     moved = given != f"`{starts.letters[0]}`, `{starts.letters[1]}` = {p}, {q}"
     return p, q, period, f"in standard form {p:.10g} {q:.10g}, T = {period:.10g}; " * moved
 
 
+@np.errstate(all="ignore")
 def refine(start: str, p: float, q: float, period: float, *, reach: float = 0.05) -> Refinement:
     """Refine a guess to an orbit at full double accuracy, verified.
 
@@ -134,6 +144,7 @@ def refine(start: str, p: float, q: float, period: float, *, reach: float = 0.05
     return _answer(replace(orbit, solution=solution), solution, note)
 
 
+@np.errstate(all="ignore")
 def verify_as_given(start: str, p: float, q: float, period: float) -> Orbit | Verdict:
     """Verdict on a start and its period exactly as given, without refining them.
 

@@ -21,6 +21,7 @@ from orbitsearch.starts_table import RowOfStarts, read_starts_csv
 __all__ = [
     "COLUMNS",
     "RowOfStarts",
+    "finite",
     "read_starts_csv",
     "to_csv",
     "to_json",
@@ -128,7 +129,7 @@ def to_json(records: Iterable[Record]) -> str:
         }
         for record in records
     ]
-    return json.dumps(_finite(values), indent=2, allow_nan=False)
+    return json.dumps(finite(values), indent=2, allow_nan=False)
 
 
 def to_latex(records: Iterable[Record]) -> str:
@@ -212,12 +213,12 @@ def _short(word: str) -> str:
     return f"{word[: WORD_ROOM - 8]}... ({len(word)})"
 
 
-def _finite(value: Any) -> Any:
-    """The same JSON value with null for every number that is not finite."""
+def finite(value: Any) -> Any:
+    """The same JSON value with null for every number that is not finite, since JSON has none."""
     if isinstance(value, dict):
-        return {key: _finite(item) for key, item in value.items()}
+        return {key: finite(item) for key, item in value.items()}
     if isinstance(value, list):
-        return [_finite(item) for item in value]
+        return [finite(item) for item in value]
     if isinstance(value, float) and not math.isfinite(value):
         return None
     return value

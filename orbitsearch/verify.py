@@ -93,7 +93,7 @@ def _second_opinion(motion: _Motion) -> Check:
     if value > BOUNDS["independent closure"]:
         ends.append(bodies.turned(reintegrate(motion.begin, motion.period, 10 * TOLERANCE), back))
         noise = _distance(ends[0], ends[1], motion.energy)
-    return _decide("independent closure", value, noise, "scipy DOP853, inertial frame")
+    return _decide("independent closure", value, noise, "scipy DOP853")
 
 
 def _least_period(motion: _Motion, returns: int, closure: float) -> Check:

@@ -68,6 +68,7 @@ BAD_GUESSES = {
     "negative period": (("perpendicular", 0.3, 0.5, -2), "`period` must be positive: -2.0"),
     "no such set": (("square", 0.3, 0.5, 6), "`start` must be one of collinear, .*: 'square'"),
     "huge": (("collinear", 1e200, 0, 6), "must be bound, E < 0: E = inf"),
+    "endless": (("collinear", 0.3, 0.5, 1e9), r"`period` must be at most T. = 10000: 1e.09"),
     "text": (("collinear", "x", 0.5, 6), "argument --at: invalid float value: 'x'"),
 }
 
@@ -245,3 +246,12 @@ def test_as_a_program_a_refused_request_is_one_line_too(tmp_path: Path) -> None:
         assert (started.returncode, out) == (2, "")
         assert re.fullmatch(r"orbitsearch: .+\n", err)
     no_traces(tmp_path)
+
+
+def test_negative_numbers_with_exponents_are_numbers(folder: Path, capsys) -> None:
+    guess = ["--at", "-3.471e-1", "5.327e-1", "--period", "6.3259"]
+    code, out, _ = run(capsys, "refine", "--start", "collinear", *guess)
+    assert code == 0
+    assert "in standard form 0.3471 0.5327" in out
+    said = complaint(run(capsys, "search", "--window", "-inf", 1, 0, 1))
+    assert "`window` must hold finite numbers: -inf" in said

@@ -84,7 +84,10 @@ def search(options: Namespace) -> int:
             state = "stopped"
         bar.close()
         if state == "stopped":
+            # The signal may have come between filing an orbit and telling of it.
             counts = catalog.runs()[-1].counts or {}
+            run = catalog.runs()[-1].id
+            new |= {record.id: record.orbit for record in catalog.orbits() if record.run_id == run}
         records = sorted(
             (catalog.get(id) for id in new), key=lambda record: record.orbit.scaled_period
         )

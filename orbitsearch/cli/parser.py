@@ -3,8 +3,9 @@
 from __future__ import annotations
 
 import argparse
+import re
 from pathlib import Path
-from typing import NoReturn
+from typing import Any, NoReturn
 
 from orbitsearch import __version__
 from orbitsearch.cli.commands import COMMANDS
@@ -18,6 +19,13 @@ SETS = "collinear, isosceles, rest or perpendicular"
 
 class _OneLineParser(argparse.ArgumentParser):
     """Parser whose complaints are one line that ends with the next step."""
+
+    def __init__(self, **options: Any) -> None:
+        super().__init__(**options)
+        # Python before 3.14 takes -1e-3 and -inf for options; there is no public way to say more.
+        self._negative_number_matcher = re.compile(
+            r"-((\d+\.?\d*|\.\d+)(e[-+]?\d+)?|inf|nan)$", re.IGNORECASE
+        )
 
     def error(self, message: str) -> NoReturn:
         complain(f"{message}; see `{self.prog} --help`")

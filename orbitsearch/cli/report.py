@@ -8,6 +8,7 @@ from typing import Any
 
 from orbitsearch.orbit import Check, Orbit, Verdict
 from orbitsearch.records import Record
+from orbitsearch.tables import finite
 
 __all__ = [
     "complain",
@@ -29,7 +30,7 @@ def say(text: str) -> None:
 
 def say_json(value: Any) -> None:
     """Write the one JSON value."""
-    say(json.dumps(value, indent=2, allow_nan=False))
+    say(json.dumps(finite(value), indent=2, allow_nan=False))
 
 
 def complain(text: str) -> None:
