@@ -125,14 +125,21 @@ def _broadcast(typingctx, x):
     return LANE_VECTOR(types.float64), codegen
 
 
-@intrinsic
-def _vector_sqrt(typingctx, x):
-    def codegen(context, builder, signature, args):
-        kind = ir.FunctionType(_IR, [_IR])
-        function = cgutils.get_or_insert_function(builder.module, kind, f"llvm.sqrt.v{LANES}f64")
-        return builder.call(function, args)
+def _unary(name):
+    @intrinsic
+    def apply(typingctx, x):
+        def codegen(context, builder, signature, args):
+            kind = ir.FunctionType(_IR, [_IR])
+            full = f"llvm.{name}.v{LANES}f64"
+            return builder.call(cgutils.get_or_insert_function(builder.module, kind, full), args)
 
-    return LANE_VECTOR(LANE_VECTOR), codegen
+        return LANE_VECTOR(LANE_VECTOR), codegen
+
+    return apply
+
+
+_vector_sqrt = _unary("sqrt")
+_vector_magnitude = _unary("fabs")
 
 
 @intrinsic
@@ -142,16 +149,6 @@ def _vector_choose(typingctx, a, b, x, y):
         return builder.select(at_least, args[2], args[3])
 
     return LANE_VECTOR(*(LANE_VECTOR,) * 4), codegen
-
-
-@intrinsic
-def _vector_magnitude(typingctx, x):
-    def codegen(context, builder, signature, args):
-        kind = ir.FunctionType(_IR, [_IR])
-        function = cgutils.get_or_insert_function(builder.module, kind, f"llvm.fabs.v{LANES}f64")
-        return builder.call(function, args)
-
-    return LANE_VECTOR(LANE_VECTOR), codegen
 
 
 @intrinsic

@@ -179,55 +179,35 @@ def verify(starts: StartSet, p: float, q: float, time: float, kind: int) -> Orbi
     momentum; closure by scipy's DOP853; least separation; Floquet multipliers by two computations.
     """
     own, stop = starts.own, CONDITIONS[kind]
-    multiple = period_multiple(own, stop)
-    period = multiple * time
+    period = period_multiple(own, stop) * time
     x = starts.states(np.array([p]), np.array([q]))[0]
     relative = own.reversal.plane == stop.reversal.plane == "mirror"
     motion = _integrate(x, period, relative)
     if isinstance(motion, Verdict):
         return motion
-    energy = motion.energy
-    direct, blur, growth = stability.direct_traces(x, period, motion.rotation)
     arc = stability.Arc(x, motion.half.states(np.array([time]))[0], time, own, stop)
     traces, errors = stability.symmetric_traces(arc)
-    noise = growth * ROUNDING + motion.noise
-    difference = stability.trace_difference(traces, direct)
-
     seen = crossings(own, motion.half)
     syzygies = "".join(str(body) for body, _ in seen)
+    checks = _checks(motion, traces, len(seen) // 2)
+    verdict = _verdict(checks)
     try:
-        word, unreadable = words.canonical_word(words.free_group_word(seen)), ""
+        word = words.canonical_word(words.free_group_word(seen))
     except BadRequest as problem:
         # Only half a period is read: of a motion that does not close, the rest is another one.
-        word, unreadable = "", f"its alignments cannot be read: {problem}"
-    closure = _distance(x, bodies.turned(motion.end, -motion.rotation), energy)
-    along = motion.half.states(motion.half.times)
-    drift = float(np.abs(bodies.energy(along) / energy - 1.0).max())
-    momentum = float(np.abs(bodies.angular_momentum(along)).max() * np.sqrt(abs(energy)))
-    separation = _least_separation(motion)
-    least = BOUNDS["least separation"]
-    checks = (
-        _decide("closure", closure, noise),
-        _second_opinion(motion),
-        _least_period(motion, len(seen) // 2, closure),
-        # Beside a close approach energy is the small difference of two large numbers.
-        _decide("energy drift", drift, ROUNDING / separation),
-        _decide("angular momentum", momentum, 0.0),
-        Check("least separation", separation, least, separation > least),
-        _decide("multipliers", difference, blur + growth * noise, "two computations"),
-    )
-    verdict = _verdict(checks)
-    if unreadable and verdict.status is not Status.REJECTED:
-        return Verdict(Status.REJECTED, unreadable, checks)
+        word = ""
+        if verdict.status is not Status.REJECTED:
+            reason = f"its alignments cannot be read: {problem}"
+            return Verdict(Status.REJECTED, reason, checks)
     start = Start.from_floats(starts.name, p, q, period)
     return Orbit(
         start=start,
-        energy=energy,
+        energy=motion.energy,
         angular_momentum=float(bodies.angular_momentum(x)),
         rotation=motion.rotation,
-        scaled_period=period * abs(energy) ** 1.5,
-        closure=closure,
-        least_separation=separation,
+        scaled_period=period * abs(motion.energy) ** 1.5,
+        closure=verdict.value("closure"),
+        least_separation=verdict.value("least separation"),
         syzygies=syzygies,
         cycle=words.canonical_cycle(syzygies),
         word=word,
@@ -235,6 +215,29 @@ def verify(starts: StartSet, p: float, q: float, time: float, kind: int) -> Orbi
         stability=stability.classify(traces, errors),
         verdict=verdict,
         starts=(start,),
+    )
+
+
+def _checks(motion: _Motion, traces: tuple[complex, complex], returns: int) -> tuple[Check, ...]:
+    """Every line of the verdict; `traces` are those computed from one arc."""
+    x, energy = motion.begin, motion.energy
+    direct, blur, growth = stability.direct_traces(x, motion.period, motion.rotation)
+    noise = growth * ROUNDING + motion.noise
+    closure = _distance(x, bodies.turned(motion.end, -motion.rotation), energy)
+    along = motion.half.states(motion.half.times)
+    drift = float(np.abs(bodies.energy(along) / energy - 1.0).max())
+    momentum = float(np.abs(bodies.angular_momentum(along)).max() * np.sqrt(abs(energy)))
+    separation, least = _least_separation(motion), BOUNDS["least separation"]
+    difference = stability.trace_difference(traces, direct)
+    return (
+        _decide("closure", closure, noise),
+        _second_opinion(motion),
+        _least_period(motion, returns, closure),
+        # Beside a close approach energy is the small difference of two large numbers.
+        _decide("energy drift", drift, ROUNDING / separation),
+        _decide("angular momentum", momentum, 0.0),
+        Check("least separation", separation, least, separation > least),
+        _decide("multipliers", difference, blur + growth * noise, "two computations"),
     )
 
 

@@ -21,7 +21,17 @@ from numpy.typing import NDArray
 
 from orbitsearch import bodies
 
-__all__ = ["Array", "Condition", "Reversal", "StartSet", "base_sides", "product_form"]
+__all__ = [
+    "Array",
+    "Condition",
+    "Reversal",
+    "StartSet",
+    "base_sides",
+    "half_base",
+    "place_of",
+    "product_form",
+    "swap_of_others",
+]
 
 Array = NDArray[np.float64]
 
@@ -182,6 +192,24 @@ def base_sides(body: int) -> tuple[int, int, int]:
     """Indices in (A, B, C) of the side opposite to a body and of the two sides that follow it."""
     base = body % 3
     return base, (base + 1) % 3, (base + 2) % 3
+
+
+def swap_of_others(body: int) -> tuple[int, int, int]:
+    """Permutation (numbered from 0) that exchanges the two bodies other than `body`."""
+    return {1: (0, 2, 1), 2: (2, 1, 0), 3: (1, 0, 2)}[body]
+
+
+def place_of(body: int) -> dict[int, float]:
+    """Position of a body as a combination of sides: r_k = (side after - side before) / 3."""
+    _, after, before = base_sides(body)
+    return {after: 1.0 / 3.0, before: -1.0 / 3.0}
+
+
+def half_base(x: Array, side: int) -> tuple[float, Array]:
+    """Half the length and the direction of one side (0, 1, 2 for A, B, C) of a state."""
+    base = x[2 * side : 2 * side + 2]
+    length = float(np.hypot(*base))
+    return 0.5 * length, base / length
 
 
 def product_form(

@@ -10,22 +10,31 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
-from orbitsearch.starts.base import Array, Condition, Reversal, StartSet, base_sides, product_form
+from orbitsearch import bodies
+from orbitsearch.starts.base import (
+    Array,
+    Condition,
+    Reversal,
+    StartSet,
+    base_sides,
+    half_base,
+    place_of,
+    product_form,
+    swap_of_others,
+)
 
 __all__ = ["Collinear"]
 
 
 def _condition(body: int) -> Condition:
-    base, after, before = base_sides(body)
-    outer = {base: 1.0}
-    middle = {after: 1.0 / 3.0, before: -1.0 / 3.0}
-    others = {1: (0, 2, 1), 2: (2, 1, 0), 3: (1, 0, 2)}[body]
+    outer = {base_sides(body)[0]: 1.0}
+    middle = place_of(body)
     return Condition(
         label=f"C{body}",
         kind=body,
         event=0,
         body=body,
-        reversal=Reversal(others, "half-turn"),
+        reversal=Reversal(swap_of_others(body), "half-turn"),
         forms=np.array(
             [
                 product_form(middle, outer),
@@ -69,12 +78,8 @@ class Collinear(StartSet):
         return _CONDITIONS
 
     def parameters_of(self, x: Array, body: int) -> tuple[float, float, float]:
-        base, after, before = base_sides(body)
-        outer = x[2 * base : 2 * base + 2]
-        unit = float(np.hypot(*outer)) / 2.0
-        e = outer / (2.0 * unit)
-        # v_k = (rate after - rate before)/3 = -2 (a, b) turned and scaled; half of each outer rate
-        # cancels, which is the reversal's own mean of the two outer bodies.
-        rate = (x[6 + 2 * after : 8 + 2 * after] - x[6 + 2 * before : 8 + 2 * before]) / 3.0
-        v = -0.5 * np.sqrt(unit) * rate
+        unit, e = half_base(x, base_sides(body)[0])
+        _, velocities = bodies.sides_to_bodies(x)
+        # The outer bodies share the velocity (a, b), the middle one has -2 (a, b).
+        v = -0.5 * np.sqrt(unit) * velocities[body - 1]
         return abs(float(v @ e)), abs(float(e[0] * v[1] - e[1] * v[0])), unit

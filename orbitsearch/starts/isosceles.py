@@ -11,7 +11,18 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
-from orbitsearch.starts.base import Array, Condition, Reversal, StartSet, base_sides, product_form
+from orbitsearch import bodies
+from orbitsearch.starts.base import (
+    Array,
+    Condition,
+    Reversal,
+    StartSet,
+    base_sides,
+    half_base,
+    place_of,
+    product_form,
+    swap_of_others,
+)
 
 __all__ = ["Isosceles"]
 
@@ -20,14 +31,13 @@ def _condition(body: int) -> Condition:
     # The apex moves along the base.  That it moves at right angles to its own place, r_k·v_k = 0,
     # says the same of a triangle, but holds of every collinear start too, where r_k = 0.
     base, after, before = base_sides(body)
-    apex = {after: 1.0 / 3.0, before: -1.0 / 3.0}
-    swapped = {1: (0, 2, 1), 2: (2, 1, 0), 3: (1, 0, 2)}[body]
+    apex = place_of(body)
     return Condition(
         label=f"I{body}",
         kind=3 + body,
         event=body,
         body=body,
-        reversal=Reversal(swapped, "mirror"),
+        reversal=Reversal(swap_of_others(body), "mirror"),
         forms=np.array(
             [
                 product_form({after: 1.0}, {after: 1.0})
@@ -77,12 +87,9 @@ class Isosceles(StartSet):
         return _CONDITIONS
 
     def parameters_of(self, x: Array, body: int) -> tuple[float, float, float]:
-        base, after, before = base_sides(body)
-        outer = x[2 * base : 2 * base + 2]
-        unit = float(np.hypot(*outer)) / 2.0
-        e = outer / (2.0 * unit)
-        apex = (x[2 * after : 2 * after + 2] - x[2 * before : 2 * before + 2]) / 3.0
-        rate = (x[6 + 2 * after : 8 + 2 * after] - x[6 + 2 * before : 8 + 2 * before]) / 3.0
+        unit, e = half_base(x, base_sides(body)[0])
+        positions, velocities = bodies.sides_to_bodies(x)
+        apex = positions[body - 1]
         height = float(e[0] * apex[1] - e[1] * apex[0])
-        speed = 0.5 * np.sqrt(unit) * float(rate @ e)
-        return abs(height) / (2.0 * unit), abs(float(speed)), unit
+        speed = np.sqrt(unit) * float(velocities[body - 1] @ e)
+        return abs(height) / (2.0 * unit), 0.5 * abs(speed), unit

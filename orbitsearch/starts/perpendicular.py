@@ -11,7 +11,8 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
-from orbitsearch.starts.base import Array, Condition, Reversal, StartSet, product_form
+from orbitsearch import bodies
+from orbitsearch.starts.base import Array, Condition, Reversal, StartSet, half_base, product_form
 
 __all__ = ["Perpendicular"]
 
@@ -65,13 +66,12 @@ class Perpendicular(StartSet):
         return (_CONDITION,)
 
     def parameters_of(self, x: Array, body: int) -> tuple[float, float, float]:
-        sides = np.hypot(x[0:6:2], x[1:6:2])
-        longest = int(np.argmax(sides))
-        unit = 0.5 * float(sides[longest])
-        e = x[2 * longest : 2 * longest + 2] / (2.0 * unit)
-        # The middle body is opposite to the longest side; the sides after and before meet in it.
-        after, before = (longest + 1) % 3, (longest + 2) % 3
-        place = (x[2 * after : 2 * after + 2] - x[2 * before : 2 * before + 2]) @ e / (2.0 * unit)
-        rate = (x[6 + 2 * after : 8 + 2 * after] - x[6 + 2 * before : 8 + 2 * before]) / 3.0
-        speed = np.sqrt(unit) * float(e[0] * rate[1] - e[1] * rate[0])
-        return abs(float(place)), abs(float(speed)), unit
+        longest = int(np.argmax(np.hypot(x[0:6:2], x[1:6:2])))
+        unit, e = half_base(x, longest)
+        positions, velocities = bodies.sides_to_bodies(x)
+        # The middle body is opposite to the longest side: 3 to A, 1 to B, 2 to C.
+        middle = (longest + 2) % 3
+        # Its place over the midpoint of the outer two, which is at minus half its own.
+        place = 1.5 * float(positions[middle] @ e) / unit
+        v = np.sqrt(unit) * velocities[middle]
+        return abs(place), abs(float(e[0] * v[1] - e[1] * v[0])), unit
