@@ -64,7 +64,7 @@ def measure(section: Section, repeats: int) -> tuple[str, list[tuple[str, str, s
     named = [(c.name, median) for c, median in zip(section.contestants, medians, strict=True)]
     table = tabulate(
         [(name, f"{median:,.0f}", f"{6e10 / median:,.0f}") for name, median in named],
-        (section.title, f"ns per {section.unit}", f"{section.unit}s per CPU-minute"),
+        (section.title, f"ns per {section.unit}", "per CPU-minute"),
         tablefmt="simple",
         colalign=("left", "right", "right"),
     )
