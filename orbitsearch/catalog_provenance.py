@@ -5,7 +5,7 @@ from typing import Any
 
 from orbitsearch.catalog_file import CatalogFile
 from orbitsearch.catalog_rows import now, tool_version
-from orbitsearch.errors import BadRequest
+from orbitsearch.errors import BadCatalog, BadRequest
 from orbitsearch.records import Run, Source
 
 __all__ = ["END_STATES", "Provenance"]
@@ -86,18 +86,7 @@ class Provenance(CatalogFile):
                 "SELECT id, started, finished, tool_version, request, counts, state "
                 "FROM runs ORDER BY id"
             ).fetchall()
-        return [
-            Run(
-                id=id,
-                started=started,
-                finished=finished,
-                tool_version=version,
-                request=json.loads(request),
-                counts=None if counts is None else json.loads(counts),
-                state=state,
-            )
-            for id, started, finished, version, request, counts, state in rows
-        ]
+        return [_run(row) for row in rows]
 
     def add_source(
         self,
@@ -197,3 +186,14 @@ class Provenance(CatalogFile):
                 f"`{name}` must name a record of this catalogue, got {id}: "
                 "list the catalogue for the others"
             )
+
+
+def _run(row: tuple[Any, ...]) -> Run:
+    id, started, finished, version, request, counts, state = row
+    try:
+        asked, counted = json.loads(request), None if counts is None else json.loads(counts)
+    except ValueError:
+        raise BadCatalog(
+            f"run {id} of the catalogue is damaged: restore the file from a copy"
+        ) from None
+    return Run(id, started, finished, version, asked, counted, state)

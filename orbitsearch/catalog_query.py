@@ -8,7 +8,7 @@ import json
 from dataclasses import replace
 from typing import Any
 
-from orbitsearch.errors import BadRequest
+from orbitsearch.errors import BadCatalog, BadRequest
 from orbitsearch.orbit import Orbit, Start, Status
 from orbitsearch.records import Record, Source
 from orbitsearch.words import canonical_word
@@ -127,7 +127,22 @@ def record_of_row(row: tuple[Any, ...]) -> Record:
     -------
     Record
         Its starts have the digits they were filed with.
+
+    Raises
+    ------
+    BadCatalog
+        When the stored text is not that of a record.
     """
+    try:
+        return _record(row)
+    except (ValueError, KeyError, TypeError, IndexError, StopIteration) as problem:
+        raise BadCatalog(
+            f"record {row[0]} of the catalogue is damaged ({type(problem).__name__}): restore the"
+            " file from a copy, or delete that record"
+        ) from None
+
+
+def _record(row: tuple[Any, ...]) -> Record:
     id_, _, created, tool_version, run_id, note, record, starts, sources = row
     # Aggregates promise no order; the ids in front restore that of filing.
     rows = sorted(json.loads(starts))

@@ -13,6 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from orbitsearch import flow
+from orbitsearch.identity import START_APART, START_EQUAL, start_distance
 from orbitsearch.orbit import Orbit, Solution, Start, Status, Verdict
 from orbitsearch.shoot import REASONS, Shots, shoot
 from orbitsearch.starts import CONDITIONS, StartSet, period_multiple, set_of
@@ -24,8 +25,6 @@ Array = NDArray[np.float64]
 
 # An event whose residuals are below this may be an earlier end of the arc; Newton then decides.
 NEARLY_FIXED = 1e-3
-# How far Newton may move a start that is already refined, and still have found the same orbit.
-SAME_START = 1e-7
 
 
 @dataclass(frozen=True)
@@ -96,7 +95,7 @@ def _shortest(starts: StartSet, arc: Arc) -> Arc:
     ]
     better = [
         other
-        for other in shoot_arcs(starts, earlier, reach=SAME_START)
+        for other in shoot_arcs(starts, earlier, reach=START_EQUAL)
         if other.solution.status is Status.CONVERGED and other.time < arc.time * (1 - 1e-6)
     ]
     return min(better, key=lambda other: other.time, default=arc)
@@ -153,5 +152,4 @@ def complete(starts: StartSet, arc: Arc) -> Orbit | Verdict:
 
 def _distinct(first: Start, other: Start) -> tuple[Start, ...]:
     """Both starts, or one where the orbit comes back to the same standard form."""
-    same = first.kind == other.kind and max(abs(first.p - other.p), abs(first.q - other.q)) < 1e-6
-    return (first,) if same else (first, other)
+    return (first,) if start_distance(first, other) < START_APART else (first, other)

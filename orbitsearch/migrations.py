@@ -134,6 +134,9 @@ def migrate(connection: sqlite3.Connection) -> int:
     sqlite3.Error
         When a step fails; the file stays at the version before it.
     """
+    # The usual case first: a look needs no lock, so that readers do not wait for a writer.
+    if read_version(connection) >= len(STEPS):
+        return 0
     made = 0
     while True:
         connection.execute("BEGIN IMMEDIATE")

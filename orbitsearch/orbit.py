@@ -195,9 +195,10 @@ class Orbit:
     scaled_period : float
         T* = T |E|^(3/2).
     closure : float
-        Largest distance of a body from its place after one period, over the size of the orbit.
+        Largest difference of a body's position, in 1/|E|, or velocity, in |E|^(1/2), after one
+        period and the rotation.
     least_separation : float
-        Least distance of two bodies along the orbit over the size of the orbit.
+        Least distance of two bodies along the orbit, in 1/|E|.
     syzygies : str
         Middle body of every alignment along one period from the start.
     cycle : str

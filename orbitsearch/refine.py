@@ -49,6 +49,13 @@ class Refinement:
     message: str
 
     @property
+    def asked_for(self) -> Orbit | None:
+        """The orbit, when it is the one asked for and may be filed: verified or not confirmed."""
+        if self.orbit is None or self.elsewhere or self.orbit.status is Status.REJECTED:
+            return None
+        return self.orbit
+
+    @property
     def status(self) -> Status:
         """Status of the verdict, or of the solver when it found nothing."""
         return self.solution.status if self.orbit is None else self.orbit.status
@@ -74,7 +81,8 @@ def _standard(
     with np.errstate(all="ignore"):
         x = starts.states(np.array([p]), np.array([q]))[0]
         energy = float(bodies.energy(x))
-        if not starts.inside(np.array([p]), np.array([q]))[0]:
+        standard = bool(starts.inside(np.array([p]), np.array([q]))[0])
+        if not standard:
             p, q, unit = starts.parameters_of(x, starts.own.body)
             period /= unit**1.5
     if not (np.isfinite(period) and starts.inside(np.array([p]), np.array([q]))[0]):
@@ -92,8 +100,8 @@ def _standard(
             f"`period` must be at most T* = {LONGEST:g}: {given_period:g} is T* = {scaled:.6g};"
             " give one turn round the orbit"
         )
-    moved = given != f"`{starts.letters[0]}`, `{starts.letters[1]}` = {p}, {q}"
-    return p, q, period, f"in standard form {p:.10g} {q:.10g}, T = {period:.10g}; " * moved
+    note = "" if standard else f"in standard form {p:.10g} {q:.10g}, T = {period:.10g}; "
+    return p, q, period, note
 
 
 @np.errstate(all="ignore")
@@ -183,6 +191,7 @@ def _answer(orbit: Orbit, solution: Solution, note: str) -> Refinement:
     elsewhere = solution.moved > ELSEWHERE or abs(solution.period_moved) > ELSEWHERE_PERIOD
     times = 1.0 / (1.0 + solution.period_moved)
     if solution.moved <= ELSEWHERE and round(times) > 1 and abs(times - round(times)) < 0.05:
+        elsewhere = False
         message = f"the least period is 1/{round(times)} of the period given"
     elif elsewhere:
         message = (

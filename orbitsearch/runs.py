@@ -20,7 +20,14 @@ from orbitsearch.refine import refine
 from orbitsearch.search import Event, Finished, Found, SearchRequest, TileDone, search
 from orbitsearch.starts_table import RowOfStarts
 
-__all__ = ["Filed", "ImportedRow", "Known", "import_rows", "run_search"]
+__all__ = ["Filed", "ImportedRow", "Known", "Started", "import_rows", "run_search"]
+
+
+@dataclass(frozen=True)
+class Started:
+    """The run has a number in the catalogue; the first event of all."""
+
+    run: int
 
 
 @dataclass(frozen=True)
@@ -53,7 +60,7 @@ class ImportedRow:
 
 def run_search(
     catalog: Catalog, request: SearchRequest, *, workers: int | None = None
-) -> Generator[Event | Filed | Known, None, None]:
+) -> Generator[Event | Started | Filed | Known, None, None]:
     """Search a window and file what is found.
 
     Parameters
@@ -65,12 +72,13 @@ def run_search(
 
     Yields
     ------
-    Events of `orbitsearch.search.search`, with `Filed` after each `Found`, and `Known`.
+    `Started`, then the events of `orbitsearch.search.search`, with `Filed` after each `Found`, and
+    `Known`.
 
     Notes
     -----
-    The run is a row of the catalogue from the beginning; its state becomes ``finished`` at the end
-    and ``stopped`` when the iterator is closed before, or Ctrl-C arrives.
+    The run is a row of the catalogue from the beginning; its state becomes ``finished`` at the end,
+    ``stopped`` when the iterator is closed before or Ctrl-C arrives, and ``failed`` on an error.
     """
     run_id = catalog.start_run(request.to_json())
     met: list[Known] = []
@@ -83,6 +91,7 @@ def run_search(
     counts: Counter[str] = Counter()
     state = "stopped"
     try:
+        yield Started(run_id)
         with closing(search(request, known=known, workers=workers)) as events:
             for event in events:
                 yield event
@@ -96,8 +105,12 @@ def run_search(
                 elif isinstance(event, TileDone):
                     counts += event.counts
                 elif isinstance(event, Finished):
-                    counts = event.counts + Counter(filed=counts["filed"])
+                    mine = {key: counts[key] for key in ("filed", "known")}
+                    counts = event.counts | Counter(mine)
                     state = "finished"
+    except Exception:
+        state = "failed"
+        raise
     finally:
         catalog.finish_run(run_id, dict(counts), state)
 
@@ -127,10 +140,9 @@ def import_rows(
             status, message = Status.REJECTED, str(problem)
         else:
             status, message = answer.status, answer.message
-            kept = status in (Status.VERIFIED, Status.NOT_CONFIRMED)
-            if answer.orbit is not None and kept and not answer.elsewhere:
-                record = catalog.add(answer.orbit)
-            elif kept:
+            if answer.asked_for is not None:
+                record = catalog.add(answer.asked_for)
+            elif answer.orbit is not None:
                 status = Status.REJECTED
         catalog.add_source(
             None if record is None else record.id,

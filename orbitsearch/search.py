@@ -23,6 +23,7 @@ import numpy as np
 from orbitsearch import flow
 from orbitsearch.complete import Arc, complete, make_arc
 from orbitsearch.errors import BadRequest
+from orbitsearch.identity import START_EQUAL
 from orbitsearch.orbit import Orbit, Start, Status, Verdict
 from orbitsearch.refine import refine
 from orbitsearch.scan import candidates, scan
@@ -41,14 +42,13 @@ __all__ = [
     "search",
 ]
 
-# Cells along the side of a tile: enough candidates to keep all lanes busy, small enough to report
-# progress and to stop within a second.
+# Cells along the side of a tile: enough candidates to keep all lanes busy, few enough that stopping
+# waits for a second or two.
 TILE = 25
 # A guess may move this many cells; farther away another triangle has found the same orbit.
 REACH_CELLS = 8.0
-# Two refined starts closer than this are one (a start is refined to 1e-10 or better).
-SAME_START = 1e-7
 LARGEST_GRID = 50_000_000
+LOOK = 512
 
 
 @dataclass(frozen=True)
@@ -106,18 +106,16 @@ class SearchRequest:
             )
 
     def _has_bound_starts(self, starts: StartSet) -> bool:
-        # A coarse look first, so that a huge grid is not built to learn what a small one tells.
-        for n in {min(64, self.grid[0]), self.grid[0]} if max(self.grid) <= 4096 else {512}:
-            m = min(self.grid[1], max(n, 64))
-            p, q = np.meshgrid(
-                np.linspace(*self.window[:2], n), np.linspace(*self.window[2:], m), indexing="ij"
-            )
-            with np.errstate(all="ignore"):
-                bound = starts.inside(p.ravel(), q.ravel())
-                bound &= starts.energies(p.ravel(), q.ravel()) < 0
-            if bound.any():
-                return True
-        return False
+        # At most LOOK starts each way, edges included: what a huge grid alone could show is less
+        # than a five-hundredth of the window.
+        p, q = np.meshgrid(
+            np.linspace(*self.window[:2], min(self.grid[0], LOOK)),
+            np.linspace(*self.window[2:], min(self.grid[1], LOOK)),
+            indexing="ij",
+        )
+        with np.errstate(all="ignore"):
+            bound = starts.energies(p.ravel(), q.ravel()) < 0
+        return bool((bound & starts.inside(p.ravel(), q.ravel())).any())
 
     @property
     def tiles(self) -> int:
@@ -232,7 +230,7 @@ def _scan_tile(request: SearchRequest, tile: int) -> _Tile:
 
 
 def _close(one: Arc, other: Arc) -> bool:
-    return max(abs(one.p - other.p), abs(one.q - other.q)) < SAME_START
+    return max(abs(one.p - other.p), abs(one.q - other.q)) < START_EQUAL
 
 
 def _complete(start: str, arc: Arc) -> Orbit | Verdict:
@@ -277,7 +275,7 @@ class _Search:
     def _near(places: list[tuple[float, float]], place: tuple[float, float]) -> bool:
         if not places:
             return False
-        return bool(np.abs(np.array(places) - place).max(axis=1).min() < SAME_START)
+        return bool(np.abs(np.array(places) - place).max(axis=1).min() < START_EQUAL)
 
     def _start(self, arc: Arc) -> Start:
         return Start.from_floats(self.request.start, arc.p, arc.q, arc.period(self.starts))

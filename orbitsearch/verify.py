@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 from orbitsearch import bodies, flow, stability, words
 from orbitsearch.crossings import crossings
 from orbitsearch.errors import BadRequest
-from orbitsearch.independent import TOLERANCE, reintegrate
+from orbitsearch.independent import by_bodies, by_sides
 from orbitsearch.orbit import Check, Orbit, Start, Status, Verdict
 from orbitsearch.starts import CONDITIONS, StartSet, period_multiple
 
@@ -26,7 +26,8 @@ Array = NDArray[np.float64]
 
 BOUNDS = {
     "closure": 1e-7,
-    "independent closure": 1e-7,
+    "independent closure": 1e-6,
+    "closure in sides": 1e-7,
     "least period": 1e-5,
     "energy drift": 1e-10,
     "angular momentum": 1e-10,
@@ -37,6 +38,8 @@ BOUNDS = {
 
 # Rounding of the start and of the time of one period, over the norm of the monodromy matrix.
 ROUNDING = 1e-15
+# Stands for the outcome of an integration that gave up.
+LOST = 1e99
 # A value up to this many times what rounding was seen to do may be due to it.
 BENEFIT = 30.0
 # Directions in which the start is turned to see what rounding does to the motion: the lanes of one
@@ -85,15 +88,21 @@ def _decide(name: str, value: float, noise: float, note: str = "") -> Check:
     return Check(name, value, bound, False, note)
 
 
-def _second_opinion(motion: _Motion) -> Check:
-    """Closure by DOP853; its noise is what a tenfold tolerance changes."""
-    back = -motion.rotation
-    ends = [bodies.turned(reintegrate(motion.begin, motion.period), back)]
-    value, noise = _distance(motion.begin, ends[0], motion.energy), 0.0
-    if value > BOUNDS["independent closure"]:
-        ends.append(bodies.turned(reintegrate(motion.begin, motion.period, 10 * TOLERANCE), back))
-        noise = _distance(ends[0], ends[1], motion.energy)
-    return _decide("independent closure", value, noise, "scipy DOP853")
+def _second_opinions(motion: _Motion) -> tuple[Check, Check]:
+    """Closure by DOP853 in two sets of coordinates; the noise is how much they differ."""
+    x, period, energy = motion.begin, motion.period, motion.energy
+    inertial, sides = (
+        bodies.turned(integrate(x, period), -motion.rotation) for integrate in (by_bodies, by_sides)
+    )
+    # An integration that gave up says nothing: a closure, and a noise, beyond all bounds.
+    noise, *closures = (
+        float(np.nan_to_num(_distance(a, b, energy), nan=LOST))
+        for a, b in ((inertial, sides), (x, inertial), (x, sides))
+    )
+    return (
+        _decide("independent closure", closures[0], noise, "scipy DOP853, inertial frame"),
+        _decide("closure in sides", closures[1], noise, "scipy DOP853, sides"),
+    )
 
 
 def _least_period(motion: _Motion, returns: int, closure: float) -> Check:
@@ -231,7 +240,7 @@ def _checks(motion: _Motion, traces: tuple[complex, complex], returns: int) -> t
     difference = stability.trace_difference(traces, direct)
     return (
         _decide("closure", closure, noise),
-        _second_opinion(motion),
+        *_second_opinions(motion),
         _least_period(motion, returns, closure),
         # Beside a close approach energy is the small difference of two large numbers.
         _decide("energy drift", drift, ROUNDING / separation),

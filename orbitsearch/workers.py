@@ -76,18 +76,19 @@ def worker_pool(workers: int) -> Iterator[Executor]:
                 pool.submit(os.getpid)
         yield pool
     finally:
-        pool.shutdown(wait=True, cancel_futures=True)
+        # A second Ctrl-C, from someone impatient, must not leave workers behind.
+        with _interrupts_held():
+            pool.shutdown(wait=True, cancel_futures=True)
 
 
 @contextmanager
 def _interrupts_held() -> Iterator[None]:
     """Ctrl-C waits, and processes started meanwhile never hear of it, not even as they start."""
-    if not hasattr(signal, "pthread_sigmask"):
-        yield
-        return
-    # Started with the first worker, it would let the interrupts go.
-    resource_tracker.ensure_running()
-    before = signal.pthread_sigmask(signal.SIG_BLOCK, {signal.SIGINT})
+    before = None
+    if hasattr(signal, "pthread_sigmask"):
+        # Started with the first worker, it would let the interrupts go.
+        resource_tracker.ensure_running()
+        before = signal.pthread_sigmask(signal.SIG_BLOCK, {signal.SIGINT})
     # Workers inherit the mask of this thread; the signal still comes by way of any other thread.
     handler, held = signal.getsignal(signal.SIGINT), []
     mine = handler is not None and threading.current_thread() is threading.main_thread()
@@ -98,9 +99,10 @@ def _interrupts_held() -> Iterator[None]:
     finally:
         if mine:
             signal.signal(signal.SIGINT, handler)
-        signal.pthread_sigmask(signal.SIG_SETMASK, before)
-    if held:
-        raise KeyboardInterrupt
+        if before is not None:
+            signal.pthread_sigmask(signal.SIG_SETMASK, before)
+    if held and callable(handler):
+        handler(signal.SIGINT, None)
 
 
 def result_of(future: Future[Any]) -> Any:

@@ -428,3 +428,48 @@ def test_a_killed_maker_leaves_a_file_that_opens(tmp_path: Path) -> None:
     assert child.returncode == -signal.SIGKILL
     with Catalog.open(place, create=False) as catalog:
         assert catalog.add(figure_eight()).new
+
+
+def test_readers_do_not_wait_for_a_writer(tmp_path: Path) -> None:
+    path = tmp_path / "orbits.db"
+    with Catalog.open(path) as catalog:
+        catalog.add(figure_eight())
+    with closing(sqlite3.connect(path, isolation_level=None)) as writer:
+        writer.execute("BEGIN IMMEDIATE")
+        statements: list[str] = []
+        with Catalog.open(path, create=False) as catalog:
+            catalog._connection.set_trace_callback(statements.append)
+            assert len([*catalog.orbits()]) == 1
+        writer.execute("ROLLBACK")
+    assert not any(s.startswith("BEGIN IMMEDIATE") for s in statements)
+
+
+@pytest.mark.parametrize(
+    ("damage", "message"),
+    [
+        ("UPDATE orbits SET record = '{'", r"^record 1 of the catalogue is damaged"),
+        ("UPDATE orbits SET record = '{}'", r"^record 1 of the catalogue is damaged"),
+        ("DELETE FROM starts", r"^record 1 of the catalogue is damaged"),
+    ],
+)
+def test_a_damaged_record_is_named(tmp_path: Path, damage: str, message: str) -> None:
+    path = tmp_path / "orbits.db"
+    with Catalog.open(path) as catalog:
+        catalog.add(figure_eight())
+    with closing(sqlite3.connect(path)) as connection, connection:
+        connection.execute(damage)
+    with Catalog.open(path) as catalog:
+        with pytest.raises(BadCatalog, match=message):
+            catalog.get(1)
+        with pytest.raises(BadCatalog, match=message):
+            [*catalog.orbits()]
+
+
+def test_a_damaged_run_is_named(tmp_path: Path) -> None:
+    path = tmp_path / "orbits.db"
+    with Catalog.open(path) as catalog:
+        catalog.start_run({"start": "rest"})
+    with closing(sqlite3.connect(path)) as connection, connection:
+        connection.execute("UPDATE runs SET request = 'x'")
+    with Catalog.open(path) as catalog, pytest.raises(BadCatalog, match=r"^run 1 .* is damaged"):
+        catalog.runs()

@@ -190,7 +190,7 @@ def test_show_gives_one_orbit_with_its_origin(capsys, catalog: Path) -> None:
 def test_runs_and_starts_are_listed(capsys, catalog: Path) -> None:
     ran = run(capsys, "runs", "--catalog", catalog)
     assert ran.out.startswith("run 1 finished ")
-    assert ran.out.rstrip().endswith("T* < 12; 2 new")
+    assert ran.out.rstrip().endswith("T* < 12; 2 orbits filed")
     said = run(capsys, "runs", "--catalog", catalog, "--json").json
     assert [(one["id"], one["state"], one["counts"]["filed"]) for one in said] == [
         (1, "finished", 2)

@@ -120,7 +120,7 @@ def test_without_a_catalogue_there_is_nothing_to_read_and_none_is_made(
 ) -> None:
     said = complaint(run(capsys, *command.split(), "--catalog", "missing/none.db"))
     assert "there is no catalogue missing" in said
-    assert "check `path`" in said
+    assert "check `--catalog`" in said
     no_traces(folder)
 
 
@@ -135,8 +135,8 @@ def test_an_unknown_number_is_refused(capsys, filed: Path, command, number) -> N
     ("filters", "reason"),
     [
         (["--word", "abc"], "`word` must use only the letters a, b, A, B, got 'c' at place 3"),
-        (["--max-scaled-period", "nan"], "`max_scaled_period` must be positive, got nan"),
-        (["--max-scaled-period", "-1"], "`max_scaled_period` must be positive, got -1"),
+        (["--max-scaled-period", "nan"], "`--max-scaled-period` must be positive, got nan"),
+        (["--max-scaled-period", "-1"], "`--max-scaled-period` must be positive, got -1"),
         (["--start", "square"], "`start` must be one of collinear, isosceles"),
     ],
 )

@@ -3,11 +3,14 @@
 import csv
 import io
 import json
+import os
 import shutil
+import subprocess
+import sys
 from pathlib import Path
 
 import pytest
-from commands import EIGHT_WINDOW, run
+from commands import EIGHT_WINDOW, ROOT, program, run
 from published import EIGHT_TWIN, LI_LIAO_2017, LI_LIAO_2019
 
 from orbitsearch.catalog import Catalog
@@ -114,3 +117,26 @@ def test_export_to_the_screen_and_to_a_file_are_the_same(capsys, catalog: Path, 
     else:
         assert screen.startswith(r"\begin{tabular}")
         assert repr(EIGHT_TWIN.a)[:11] in screen
+
+
+def test_an_import_goes_on_when_its_reader_has_gone(tmp_path: Path) -> None:
+    rows = "".join(f"collinear,0.3471,0.5327,6.3259,row {n}\n" for n in range(5))
+    (tmp_path / "rows.csv").write_text(f"start,p,q,period,label\n{rows}", encoding="utf-8")
+    ran = program("import", "rows.csv", "--source", "test", "--catalog", "c.db", cwd=tmp_path)
+    assert ran.stdout is not None
+    ran.stdout.close()
+    assert ran.stderr is not None
+    with ran.stderr as err:
+        assert err.read() == ""
+    assert ran.wait() == 0
+    with Catalog.open(tmp_path / "c.db") as catalog:
+        assert len(catalog.sources(1)) == 5
+
+
+def test_letters_that_the_terminal_lacks_are_escaped(tmp_path: Path) -> None:
+    done = subprocess.run(
+        [sys.executable, "-m", "orbitsearch", "starts"],
+        cwd=tmp_path, capture_output=True, text=True, check=True,
+        env={**os.environ, "PYTHONPATH": str(ROOT), "PYTHONIOENCODING": "ascii"},
+    )  # fmt: skip
+    assert "\\u03b7" in done.stdout

@@ -1,17 +1,17 @@
 """The command line: a thin skin over the package.
 
 Every command has ``--json`` (one JSON value on standard output and nothing else) and ``--catalog``.
-Exit codes: 0 done; 1 carried out, but the answer is no (no orbit, not verified, a row that failed);
-2 the request cannot be carried out, with one line that says why; 130 stopped by Ctrl-C.
+Exit codes: 0 done; 1 carried out, but the answer is no (no orbit, another one than asked for, not
+verified, a row that failed); 2 the request cannot be carried out, with one line that says why; 130
+stopped by Ctrl-C.
 """
 
 from __future__ import annotations
 
-import sys
 from collections.abc import Sequence
 
 from orbitsearch.cli.parser import make_parser
-from orbitsearch.cli.report import complain
+from orbitsearch.cli.report import any_letter, complain
 from orbitsearch.errors import OrbitsearchError
 
 __all__ = ["main"]
@@ -33,16 +33,20 @@ def main(arguments: Sequence[str] | None = None) -> int:
     int
         Exit code.
     """
+    any_letter()
     options = make_parser().parse_args(arguments)
     try:
         return int(options.run(options))
     except OrbitsearchError as problem:
-        complain(str(problem))
+        complain(_typed(str(problem)))
         return BAD_REQUEST
     except KeyboardInterrupt:
         complain("stopped")
         return STOPPED
-    except BrokenPipeError:
-        # The reader of a pipe has what it wanted (`orbitsearch list | head`).
-        sys.stderr.close()
-        return 0
+
+
+def _typed(message: str) -> str:
+    """The message with arguments named as they are typed, not as Python names them."""
+    for name, option in (("path", "catalog"), ("max_scaled_period", "max-scaled-period")):
+        message = message.replace(f"`{name}`", f"`--{option}`")
+    return message

@@ -5,11 +5,13 @@ The solver is imported inside the commands that use it, so that listing costs no
 
 from __future__ import annotations
 
+import json
 import signal
 import sys
 from argparse import Namespace
-from collections.abc import Iterable
-from contextlib import closing
+from collections import Counter
+from collections.abc import Iterable, Iterator
+from contextlib import closing, contextmanager
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -50,17 +52,15 @@ def _request(options: Namespace) -> SearchRequest:
 
 def search(options: Namespace) -> int:
     """Search a window, file what is found, print counts and a table."""
-    from orbitsearch.runs import Filed, Known, run_search
-    from orbitsearch.search import Finished, TileDone
+    from orbitsearch.runs import Filed, Known, Started, run_search
+    from orbitsearch.search import TileDone
     from orbitsearch.workers import check_workers
 
     request = _request(options)
     workers = check_workers(options.workers)
     new, known, counts = {}, set(), {}
-    state = "finished"
-    # A batch system that ends a job asks first; what it asks for is what Ctrl-C asks for.
-    signal.signal(signal.SIGTERM, signal.default_int_handler)
-    with Catalog.open(options.catalog) as catalog:
+    run, state = 0, "finished"
+    with _stops_once(), Catalog.open(options.catalog) as catalog:
         # `disable=None`: no bar where standard error is not a terminal.
         bar = tqdm(total=request.tiles, unit="tile", file=sys.stderr, disable=None)
         bar.set_description("compiling, the first time" if _is_cold() else "searching")
@@ -77,21 +77,19 @@ def search(options: Namespace) -> int:
                             known.add(event.id)
                     elif isinstance(event, Known):
                         known.add(event.id)
-                    elif isinstance(event, Finished):
-                        counts = dict(event.counts)
+                    elif isinstance(event, Started):
+                        run = event.run
                     bar.set_postfix(new=len(new), known=len(known), refresh=False)
         except KeyboardInterrupt:
             state = "stopped"
         bar.close()
         if state == "stopped":
             # The signal may have come between filing an orbit and telling of it.
-            counts = catalog.runs()[-1].counts or {}
-            run = catalog.runs()[-1].id
             new |= {record.id: record.orbit for record in catalog.orbits() if record.run_id == run}
         records = sorted(
             (catalog.get(id) for id in new), key=lambda record: record.orbit.scaled_period
         )
-        run = catalog.runs()[-1].id
+        counts = next((one.counts or {} for one in catalog.runs() if one.id == run), {})
     if options.json:
         say_json(
             {
@@ -110,6 +108,29 @@ def search(options: Namespace) -> int:
     return DONE
 
 
+@contextmanager
+def _stops_once() -> Iterator[None]:
+    """The first Ctrl-C stops; a second one, impatient, would only interrupt the tidying up.
+
+    A batch system that ends a job asks first, by SIGTERM, and is answered alike.
+    """
+    numbers = (signal.SIGINT, signal.SIGTERM)
+    before = {number: signal.getsignal(number) for number in numbers}
+
+    def stop(*_: object) -> None:
+        for number in numbers:
+            signal.signal(number, signal.SIG_IGN)
+        raise KeyboardInterrupt
+
+    for number in numbers:
+        signal.signal(number, stop)
+    try:
+        yield
+    finally:
+        for number, handler in before.items():
+            signal.signal(number, handler)
+
+
 def _is_cold() -> bool:
     """Whether the kernels still have to be compiled on this machine."""
     from orbitsearch.flow import is_compiled
@@ -124,9 +145,9 @@ def refine(options: Namespace) -> int:
     answer = refine_guess(options.start, options.at[0], options.at[1], options.period)
     kept = None
     orbit = answer.orbit
-    if options.keep and orbit is not None and orbit.status is not Status.REJECTED:
+    if options.keep and answer.asked_for is not None:
         with Catalog.open(options.catalog) as catalog:
-            kept = catalog.add(orbit)
+            kept = catalog.add(answer.asked_for)
     if options.json:
         solution = {"status": str(answer.solution.status), "reason": answer.solution.reason}
         value: dict[str, Any] = {"status": str(answer.status), "solution": solution}
@@ -142,7 +163,10 @@ def refine(options: Namespace) -> int:
         say(answer.message)
         if kept is not None:
             say(f"{'filed as' if kept.new else 'already filed as'} orbit {kept.id}")
-    return DONE if answer.status in (Status.VERIFIED, Status.NOT_CONFIRMED) else NO
+        elif options.keep:
+            advice = "; refine from the numbers above to keep that orbit" if orbit else ""
+            say(f"not filed{advice}")
+    return NO if answer.asked_for is None else DONE
 
 
 def verify(options: Namespace) -> int:
@@ -169,6 +193,12 @@ def verify(options: Namespace) -> int:
         say_json(value if options.id is None else {"id": options.id, **value})
     else:
         say(text)
+        if (
+            options.id is None
+            and isinstance(found, Orbit)
+            and [found.start.p, found.start.q] != guess[1]
+        ):
+            say("the numbers given were brought to standard form")
     return DONE if status is Status.VERIFIED else NO
 
 
@@ -185,7 +215,11 @@ def list_orbits(options: Namespace) -> int:
             max_scaled_period=options.max_scaled_period,
             word=options.word,
         )
-        say(tables.to_json(records) if options.json else tables.to_text(records))
+        if options.json:
+            say(tables.to_json(records))
+        else:
+            found = [*records]
+            say(tables.to_text(found) if found else "no orbits")
     return DONE
 
 
@@ -194,7 +228,7 @@ def show(options: Namespace) -> int:
     with Catalog.open(options.catalog, create=False) as catalog:
         record = catalog.get(options.id)
     if options.json:
-        say(tables.to_json([record])[1:-1].strip())
+        say_json(json.loads(tables.to_json([record]))[0])
     else:
         say(record_text(record))
     return DONE
@@ -279,6 +313,7 @@ def runs(options: Namespace) -> int:
     """List the searches filed in the catalogue."""
     with Catalog.open(options.catalog, create=False) as catalog:
         found = catalog.runs()
+        filed = Counter(record.run_id for record in catalog.orbits())
     if options.json:
         say_json(
             [
@@ -292,10 +327,11 @@ def runs(options: Namespace) -> int:
         )  # fmt: skip
     else:
         for run in found:
-            ask, got = run.request, run.counts or {}
+            ask = run.request
+            state = "running or killed" if run.state == "running" else run.state
             say(
-                f"run {run.id} {run.state} {run.started}: {ask['start']} {ask['window']},"
-                f" grid {ask['grid']}, T* < {ask['scaled_period']:g}; {got.get('filed', 0)} new"
+                f"run {run.id} {state} {run.started}: {ask['start']} {ask['window']},"
+                f" grid {ask['grid']}, T* < {ask['scaled_period']:g}; {filed[run.id]} orbits filed"
             )
     return DONE
 

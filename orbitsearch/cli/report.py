@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import io
 import json
+import os
 import sys
 from typing import Any
 
@@ -11,6 +13,7 @@ from orbitsearch.records import Record
 from orbitsearch.tables import finite
 
 __all__ = [
+    "any_letter",
     "complain",
     "counts_text",
     "orbit_text",
@@ -21,11 +24,29 @@ __all__ = [
 ]
 
 SHOWN_WORD = 200
+# Counts of starts that led to orbits, said in more words than their keys have.
+ORBIT_COUNTS = {
+    "known": "starts known already",
+    "repeated": "starts repeated",
+    "filed": "new",
+}
 
 
 def say(text: str) -> None:
-    """Write a line of the result."""
-    sys.stdout.write(f"{text}\n")
+    """Write a line of the result; work goes on when its reader has gone (``| head``)."""
+    try:
+        sys.stdout.write(f"{text}\n")
+        sys.stdout.flush()
+    except BrokenPipeError:
+        # As the documentation of Python has it: nothing may be flushed into the pipe at the end.
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+
+
+def any_letter() -> None:
+    """Let streams of a narrow encoding write η as an escape instead of failing."""
+    for stream in (sys.stdout, sys.stderr):
+        if isinstance(stream, io.TextIOWrapper):
+            stream.reconfigure(errors="backslashreplace")
 
 
 def say_json(value: Any) -> None:
@@ -59,6 +80,9 @@ def orbit_text(orbit: Orbit) -> str:
     stability = orbit.stability
     angles = " ".join(f"{angle:.12g}" for angle in stability.angles)
     rotation = f"turns by {orbit.rotation:.12g} rad" if orbit.rotation else "closes"
+    choreography = "no"
+    if orbit.choreography:
+        choreography = "yes, in the frame that turns with it" if orbit.rotation else "yes"
     lines = [
         f"start:            {orbit.start.kind} {' '.join(orbit.start.parameters)}",
         f"period T:         {orbit.start.period}   ({rotation} in the inertial frame)",
@@ -67,9 +91,9 @@ def orbit_text(orbit: Orbit) -> str:
         f"angular momentum: {orbit.angular_momentum:.3g}",
         f"word:             {_cut(orbit.word) or '(empty)'}   length {len(orbit.word)}",
         f"syzygy cycle:     {_cut(orbit.cycle) or '(empty)'}   length {len(orbit.cycle)}",
-        f"choreography:     {'yes' if orbit.choreography else 'no'}",
+        f"choreography:     {choreography}",
         f"stability:        {stability.kind}, largest multiplier {stability.max_multiplier:.9g}"
-        + (f", angles {angles}" if angles else ""),
+        + (f", angles {angles} (arg λ / 2π)" if angles else ""),
         f"least separation: {orbit.least_separation:.6g} / |E|",
     ]
     lines += [
@@ -114,5 +138,11 @@ def counts_text(counts: dict[str, int]) -> str:
         ]
         named |= {key for key in counts if key.startswith(prefix)}
         lines.append(f"{title:<10}{', '.join(parts) or 'none'}")
-    rest = [f"{n:,} {key}" for key, n in sorted(counts.items()) if key not in named]
+    if any(key.startswith("rejected: ") for key in counts):
+        named.add("rejected")
+    rest = [
+        f"{n:,} {ORBIT_COUNTS.get(key, key)}"
+        for key, n in sorted(counts.items())
+        if key not in named
+    ]
     return "\n".join([*lines, f"{'orbits:':<10}{', '.join(rest) or 'none'}"])

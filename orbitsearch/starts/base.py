@@ -79,7 +79,7 @@ class Condition:
     Attributes
     ----------
     label : str
-        ``C1`` .. ``C3``, ``I1`` .. ``I3`` or ``rest``.
+        ``C1`` .. ``C3``, ``I1`` .. ``I3``, ``rest`` or ``P``.
     kind : int
         Number under which the compiled scan records it (`orbitsearch._kernels`).
     event : int
