@@ -129,7 +129,8 @@ def kill_and_run_again(path: Path, expected: list[Orbit], chance: random.Random)
         workers = children(started.pid)
         started.kill()
         # Not `communicate`: a worker that lives on would keep the pipes open.
-        assert started.wait() == -signal.SIGKILL
+        ended = started.wait()
+        assert ended in (-signal.SIGKILL, 0)
         assert_workers_end(workers)
     if path.exists():
         left = whole_orbits(path)
@@ -137,7 +138,10 @@ def kill_and_run_again(path: Path, expected: list[Orbit], chance: random.Random)
         for one in left:
             assert sum(same_orbit(one, other) for other in expected) == 1
         with Catalog.open(path) as catalog:
-            assert [run.state for run in catalog.runs()] in ([], ["running"])
+            states = [run.state for run in catalog.runs()]
+        # After its last orbit a search may have got to its end before the signal.
+        assert states in ([], ["running"]) or len(left) == len(expected)
+        assert ended != 0 or states == ["finished"]
     with searching(path) as started:
         started.communicate()
     assert started.returncode == 0
