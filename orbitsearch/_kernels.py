@@ -6,8 +6,9 @@ keeps its own series although one is redundant: the difference of two long vecto
 short one in a close approach.  A state is 12 numbers, (A, B, C, A', B', C').
 
 Eight starts advance in the lanes of one vector.  Numba has no vector type of its own, and leaving
-the lanes to the auto-vectoriser gave 0.5 microseconds a lane-step against 0.25 with explicit
-vectors, so a small one is defined below; LLVM splits it into whatever registers the machine has.
+the lanes to LLVM's own vectoriser gave 0.55 microseconds a lane-step in a prototype; with explicit
+vectors it is 0.2 (`python -m tests.bench`).  So a small type is defined below, and LLVM splits it
+into whatever registers the machine has.
 In plain Python (``NUMBA_DISABLE_JIT=1``) a lane vector is a row of a numpy array and the same code
 runs, slowly, under a debugger or a coverage tool.
 
@@ -579,7 +580,7 @@ def _close_triangles(w, tangents):
     """Restore A + B + C = 0: the longest side becomes minus the sum of the others.
 
     Rounding alone moves the sum by an ulp a step, which then drifts; left alone it spoilt the
-    figure-eight by 1e-4 within 1,000 periods.  The least squared side goes to row H on the way.
+    figure-eight by 2e-4 within 1,000 periods.  The least squared side goes to row H on the way.
     """
     a = load(w, 0, 0) * load(w, 0, 0) + load(w, 1, 0) * load(w, 1, 0)
     b = load(w, 2, 0) * load(w, 2, 0) + load(w, 3, 0) * load(w, 3, 0)

@@ -24,9 +24,10 @@ Integers = NDArray[np.int64]
 NEAREST = 1e-5
 """Closest approach, over the size of the start, at which a scan gives a start up."""
 
-# Events kept for a start: at least, and per unit of T*; over three times the densest arcs seen.
-CAPACITY = 2000
-CAPACITY_RATE = 40
+# Events kept for a start: at least, and per unit of T*.  The densest arcs of the four default
+# windows have 2.4 a unit of T*; a start with more than its room ends with status BUDGET.
+CAPACITY = 500
+CAPACITY_RATE = 12
 # Neighbouring events correspond when their scaled times differ by less than this share.
 SAME_TIME = 0.3
 # How far outside the triangle (in barycentric units) a zero may lie: the residuals are not linear.

@@ -3,7 +3,6 @@
 import argparse
 import json
 import os
-import shutil
 from collections.abc import Iterator
 from pathlib import Path
 
@@ -13,23 +12,8 @@ from published import EIGHT, EIGHT_ANGLES
 
 from orbitsearch import __version__
 from orbitsearch.catalog import Catalog
-from orbitsearch.cli import main
 from orbitsearch.cli.parser import make_parser
 from orbitsearch.starts import START_SETS
-
-
-@pytest.fixture(scope="module")
-def searched(tmp_path_factory: pytest.TempPathFactory) -> Path:
-    """Catalogue of one small search: the figure-eight and its twin."""
-    path = tmp_path_factory.mktemp("searched") / "orbits.db"
-    assert main(["search", *EIGHT_WINDOW, "--workers", "1", "--catalog", str(path)]) == 0
-    return path
-
-
-@pytest.fixture
-def catalog(searched: Path, tmp_path: Path) -> Path:
-    """Copy of that catalogue, to be written to."""
-    return Path(shutil.copy(searched, tmp_path / "orbits.db"))
 
 
 def test_search_tells_in_json_what_it_did_and_found(capsys, tmp_path: Path) -> None:

@@ -4,17 +4,15 @@ import csv
 import io
 import json
 import os
-import shutil
 import subprocess
 import sys
 from pathlib import Path
 
 import pytest
-from commands import EIGHT_WINDOW, ROOT, program, run
+from commands import ROOT, program, run
 from published import EIGHT_TWIN, LI_LIAO_2017, LI_LIAO_2019
 
 from orbitsearch.catalog import Catalog
-from orbitsearch.cli import main
 
 # Rows as published (sources in tests/published.py), in ten digits, in five, and two that are wrong.
 TABLE = f"""\
@@ -24,20 +22,6 @@ eight,collinear,0.34711,0.53272,6.3250,a turn of the figure-eight
 unbound,collinear,0.9,0.9,6.3250,E > 0
 nothing,collinear,0.3,0.1,1.0,no orbit is near
 """
-
-
-@pytest.fixture(scope="module")
-def searched(tmp_path_factory: pytest.TempPathFactory) -> Path:
-    """Catalogue of one small search: the figure-eight and its twin."""
-    path = tmp_path_factory.mktemp("searched") / "orbits.db"
-    assert main(["search", *EIGHT_WINDOW, "--workers", "1", "--catalog", str(path)]) == 0
-    return path
-
-
-@pytest.fixture
-def catalog(searched: Path, tmp_path: Path) -> Path:
-    """Copy of that catalogue, to be written to."""
-    return Path(shutil.copy(searched, tmp_path / "orbits.db"))
 
 
 def test_import_files_good_rows_and_lists_why_others_failed(capsys, catalog: Path) -> None:
