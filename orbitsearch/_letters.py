@@ -1,11 +1,31 @@
-"""Strings read around a circle: cancelling, trimming and the least rotation, in linear time.
+"""Strings read around a circle, and the crossings that become their letters.
 
-Syzygy sequences run to thousands of letters, so nothing here looks at all rotations.
+Words, cycles and braids share this: cancelling, trimming, roots, least rotations, and the checks of
+what comes in.  Syzygy sequences run to thousands of letters, so nothing here looks at all
+rotations; and searches name thousands of motions, so the inner loops are those of `str`.
 """
 
-from collections.abc import Callable
+from collections.abc import Callable, Iterable
+from operator import eq
 
-__all__ = ["cancel", "least_rotation", "strip_ends"]
+from orbitsearch.errors import BadRequest
+
+__all__ = [
+    "arcs_heard",
+    "cancel",
+    "check_letters",
+    "crossing_letters",
+    "least_image",
+    "least_rotation",
+    "primitive_root",
+    "strip_ends",
+]
+
+_GLANCE = 12
+"""Letters by which `least_image` tells beginnings apart before it compares whole strings."""
+
+_FEW = 32
+"""So many whole rotations are compared as they stand; more would no longer be linear work."""
 
 
 def cancel(text: str, inverse: Callable[[str], str]) -> str:
@@ -16,16 +36,18 @@ def cancel(text: str, inverse: Callable[[str], str]) -> str:
     text : str
         Letters of a group.
     inverse : callable
-        Takes a letter to its inverse.
+        Takes each letter of a string to its inverse, and keeps their order.
 
     Returns
     -------
     str
         Reduced text; in a free product it does not depend on the order of cancelling.
     """
+    if not any(map(eq, text[1:], inverse(text))):
+        return text
     kept: list[str] = []
-    for letter in text:
-        if kept and kept[-1] == inverse(letter):
+    for letter, opposite in zip(text, inverse(text), strict=True):
+        if kept and kept[-1] == opposite:
             kept.pop()
         else:
             kept.append(letter)
@@ -52,6 +74,33 @@ def strip_ends(reduced: str, inverse: Callable[[str], str]) -> str:
     while end - begin >= 2 and reduced[begin] == inverse(reduced[end - 1]):
         begin, end = begin + 1, end - 1
     return reduced[begin:end]
+
+
+def primitive_root(text: str) -> tuple[str, int]:
+    """Shortest string that `text` repeats, and how often.
+
+    Parameters
+    ----------
+    text : str
+        Any string.
+
+    Returns
+    -------
+    root : str
+        As short as possible; empty when `text` is.
+    n : int
+        ``root * n == text``; 1 for the empty string.
+
+    Examples
+    --------
+    >>> primitive_root("abab"), primitive_root("aba"), primitive_root("")
+    (('ab', 2), ('aba', 1), ('', 1))
+    """
+    if not text:
+        return "", 1
+    # A string stands inside its own double, ends aside, exactly where a period of it begins.
+    period = (text + text).find(text, 1)
+    return text[:period], len(text) // period
 
 
 def least_rotation(text: str) -> str:
@@ -91,3 +140,162 @@ def least_rotation(text: str) -> str:
         same = 0
     begin = min(first, rival)
     return twice[begin : begin + length]
+
+
+def least_image(images: Iterable[str], alphabet: str) -> str:
+    """Least among all rotations of a few strings of one length, in linear time.
+
+    Most images are out after a few letters, and most places of the others: the first letters of
+    the least rotation are found by searching for each continuation in turn.  What is left, mostly
+    one rotation for each symmetry of the motion, is compared outright, or by `least_rotation` when
+    the strings repeat themselves too often for that.
+
+    Parameters
+    ----------
+    images : iterable of str
+        One or more strings of equal length.
+    alphabet : str
+        All letters that occur, in the order of their code points.
+
+    Returns
+    -------
+    str
+        As long as each image.
+
+    Examples
+    --------
+    >>> least_image(["baa", "bba"], "ab")
+    'aab'
+    """
+    left = set(images)
+    length = len(next(iter(left)))
+    glance = min(_GLANCE, length)
+    around = [text + text[: glance - 1] for text in left]
+    prefix = ""
+    for _ in range(glance):
+        for letter in alphabet:
+            longer = prefix + letter
+            found = [text for text in around if longer in text]
+            if found:
+                prefix, around = longer, found
+                break
+    beginnings = [(text, place) for text in around for place in _places(prefix, text)]
+    if len(beginnings) > _FEW:
+        roots = [primitive_root(text[:length]) for text in around]
+        return min(least_rotation(root) * n for root, n in roots)
+    return min(text[place:length] + text[:place] for text, place in beginnings)
+
+
+def _places(part: str, text: str) -> list[int]:
+    """Places where `part` begins in `text`, at most a few more than `_FEW`."""
+    found: list[int] = []
+    place = text.find(part)
+    while place >= 0 and len(found) <= _FEW:
+        found.append(place)
+        place = text.find(part, place + 1)
+    return found
+
+
+def check_letters(text: str, alphabet: str, name: str, advice: str) -> None:
+    """Refuse a text at its first character that is no letter of the alphabet.
+
+    Parameters
+    ----------
+    text, alphabet : str
+        What was given, and all letters it may use.
+    name : str
+        Name of the argument, for the message.
+    advice : str
+        What to write instead, for the message.
+
+    Raises
+    ------
+    BadRequest
+        Naming the character and its place, counted from 1.
+    """
+    if set(text).issubset(alphabet):
+        return
+    place, letter = next((i, c) for i, c in enumerate(text, start=1) if c not in alphabet)
+    raise BadRequest(
+        f"`{name}` must use only the letters {', '.join(alphabet)}, got {letter!r} at "
+        f"place {place}: {advice}"
+    )
+
+
+def crossing_letters(crossings: Iterable[tuple[int, int]]) -> str:
+    """Crossings of the equator as letters x, y, z for bodies 1, 2, 3, with inverses X, Y, Z.
+
+    Parameters
+    ----------
+    crossings : iterable of (int, int)
+        Body in the middle (1, 2 or 3) and direction, as in `orbitsearch.words.free_group_word`.
+
+    Returns
+    -------
+    str
+        One letter for each crossing: small for direction 1, capital for direction -1.
+
+    Raises
+    ------
+    BadRequest
+        When a body or a direction is none of these, or when two neighbouring crossings have the
+        same direction: between them the curve must have crossed once more, so one was missed, and
+        the name of the motion would be wrong without looking so.
+
+    Examples
+    --------
+    >>> crossing_letters([(3, 1), (1, -1)])
+    'zX'
+    """
+    letters = []
+    before = 0
+    for place, (middle, direction) in enumerate(crossings, start=1):
+        if middle not in (1, 2, 3):
+            raise BadRequest(
+                f"`crossings` must name the middle body as 1, 2 or 3, got {middle!r} at crossing "
+                f"{place}: number the bodies from 1"
+            )
+        if direction not in (1, -1):
+            raise BadRequest(
+                f"`crossings` must have direction 1 or -1, got {direction!r} at crossing {place}: "
+                "use 1 where the signed area goes from + to -"
+            )
+        if direction == before:
+            raise BadRequest(
+                f"`crossings` must alternate in direction, got {direction} twice at crossing "
+                f"{place}: one in between was missed, follow the motion with smaller steps"
+            )
+        before = direction
+        letters.append("xyz"[middle - 1] if direction == 1 else "XYZ"[middle - 1])
+    return "".join(letters)
+
+
+def arcs_heard(silent: int) -> tuple[int, int]:
+    """Bodies whose arcs are the letters a and b when one arc is left silent.
+
+    Parameters
+    ----------
+    silent : int
+        Body of the silent arc.
+
+    Returns
+    -------
+    a, b : int
+        The bodies one and two before it, counted around.
+
+    Raises
+    ------
+    BadRequest
+        When `silent` is none of 1, 2 and 3.
+
+    Examples
+    --------
+    >>> arcs_heard(3), arcs_heard(1), arcs_heard(2)
+    ((2, 1), (3, 2), (1, 3))
+    """
+    if silent not in (1, 2, 3):
+        raise BadRequest(
+            f"`silent` must be 1, 2 or 3, got {silent!r}: name the body whose crossings the word "
+            "leaves out"
+        )
+    return (silent + 1) % 3 + 1, silent % 3 + 1

@@ -14,12 +14,15 @@ from numpy.typing import NDArray
 __all__ = [
     "angular_momentum",
     "bodies_to_sides",
+    "distance",
     "energy",
     "flow_direction",
     "jacobi_from_sides",
+    "relabelled",
     "sides_from_jacobi",
     "sides_to_bodies",
     "size",
+    "turn_between",
     "turned",
 ]
 
@@ -101,6 +104,49 @@ def turned(x: Array, angle: float) -> Array:
     """States x, shape (..., 12), turned by an angle about the centre of mass."""
     c, s = np.cos(angle), np.sin(angle)
     return np.asarray((x.reshape(*x.shape[:-1], 6, 2) @ [[c, s], [-s, c]]).reshape(x.shape))
+
+
+def turn_between(x: Array, y: Array) -> float:
+    """Angle in (-π, π] by which state y, shape (12,), is x turned, by least squares."""
+    a, b = (z.reshape(6, 2) @ np.array([1.0, 1.0j]) for z in (x, y))
+    return float(np.angle(np.vdot(a, b)))
+
+
+def distance(x: Array, y: Array, energy: float) -> float:
+    """Largest difference of a body's position, in 1/|E|, or velocity, in |E|^(1/2).
+
+    Parameters
+    ----------
+    x, y : ndarray, shape (12,)
+    energy : float
+        The unit, so that the result does not depend on the scale of the orbit.
+    """
+    unit = abs(energy)
+    (r, v), (s, w) = sides_to_bodies(x), sides_to_bodies(y)
+    return float(
+        max(
+            np.linalg.norm(r - s, axis=1).max() * unit,
+            np.linalg.norm(v - w, axis=1).max() / np.sqrt(unit),
+        )
+    )
+
+
+def relabelled(x: Array, permutation: tuple[int, int, int], mirror: bool = False) -> Array:
+    """State x, shape (12,), with body i in the place of body ``permutation[i]``, mirrored or not.
+
+    Parameters
+    ----------
+    x : ndarray, shape (12,)
+    permutation : tuple of int
+        Numbered from 0.
+    mirror : bool
+        Whether the plane is also mirrored, y -> -y.
+    """
+    plane = np.array([1.0, -1.0 if mirror else 1.0])
+    images = np.empty((2, 3, 2))
+    for image, vectors in zip(images, sides_to_bodies(x), strict=True):
+        image[list(permutation)] = vectors * plane
+    return bodies_to_sides(*images)
 
 
 def jacobi_from_sides(x: Array) -> Array:

@@ -10,8 +10,22 @@ from collections.abc import Iterator
 from typing import Any
 
 from orbitsearch.catalog_provenance import Provenance
-from orbitsearch.catalog_query import PAGE, RECORD_BY_ID, page_query, record_of_row
-from orbitsearch.catalog_rows import check, insert_orbit, insert_starts, replace_orbit
+from orbitsearch.catalog_query import (
+    KINDS,
+    PAGE,
+    RECORD_BY_ID,
+    kind_of_row,
+    page_query,
+    record_of_row,
+)
+from orbitsearch.catalog_rows import (
+    check,
+    fill_in_kind,
+    insert_orbit,
+    insert_starts,
+    merge_records,
+    replace_orbit,
+)
 from orbitsearch.errors import BadRequest
 from orbitsearch.identity import (
     PERIOD,
@@ -22,7 +36,7 @@ from orbitsearch.identity import (
     shares_start,
 )
 from orbitsearch.orbit import Orbit, Status
-from orbitsearch.records import Added, NearStart, Record, StartPoint
+from orbitsearch.records import Added, Kind, NearStart, Record, StartPoint
 
 __all__ = ["Catalog"]
 
@@ -37,8 +51,10 @@ class Catalog(Provenance):
     def add(self, orbit: Orbit, run_id: int | None = None, note: str = "") -> Added:
         """File an orbit, unless it is there already.
 
-        An orbit that is there gains the starts it did not list.  A record that was not confirmed is
-        replaced by a verified one of the same orbit, under its number; nothing else ever changes.
+        An orbit that is there gains the starts it did not list, and its type when a catalogue of
+        version 1 left it open.  A record that was not confirmed is replaced by a verified one of
+        the same orbit, under its number.  Records that turn out to be one orbit, since this one has
+        a start of each, are merged into the oldest of them.  Nothing else ever changes.
 
         Parameters
         ----------
@@ -67,14 +83,21 @@ class Catalog(Provenance):
             if run_id is not None:
                 self._check_run(run_id, "run_id")
             same = self._same(orbit)
-            if same is None:
+            if not same:
                 return Added(insert_orbit(connection, orbit, run_id, note), True)
-            if same.orbit.status == Status.NOT_CONFIRMED and orbit.status == Status.VERIFIED:
-                replace_orbit(connection, same, orbit, run_id)
+            kept = same[0]
+            for other in same[1:]:
+                if shares_start(kept.orbit, orbit) and shares_start(other.orbit, orbit):
+                    merge_records(connection, kept, other)
+                    kept = self.get(kept.id)
+            if kept.orbit.status == Status.NOT_CONFIRMED and orbit.status == Status.VERIFIED:
+                replace_orbit(connection, kept, orbit, run_id)
             else:
-                fresh = new_starts(all_starts(orbit), same.orbit.starts)
-                insert_starts(connection, same.id, fresh)
-            return Added(same.id, False)
+                fresh = new_starts(all_starts(orbit), kept.orbit.starts)
+                insert_starts(connection, kept.id, fresh)
+                if kept.orbit.braid is None and orbit.braid is not None:
+                    fill_in_kind(connection, kept, orbit)
+            return Added(kept.id, False)
 
     def find_same(self, orbit: Orbit) -> int | None:
         """Number of the record of this orbit, found by `orbitsearch.identity.same_orbit`.
@@ -90,7 +113,7 @@ class Catalog(Provenance):
         """
         with self._reading():
             same = self._same(orbit)
-        return None if same is None else same.id
+        return same[0].id if same else None
 
     def find_start(self, kind: str, p: float, q: float, tolerance: float) -> list[NearStart]:
         """Records with a start near a given one.
@@ -136,6 +159,8 @@ class Catalog(Provenance):
         word: str | None = None,
         choreography: bool | None = None,
         status: Status | str | None = None,
+        braid: str | None = None,
+        symmetry: str | None = None,
     ) -> Iterator[Record]:
         """Records that meet every condition given, in order of T*, then id, read as they are used.
 
@@ -148,11 +173,15 @@ class Catalog(Provenance):
         max_scaled_period : float, optional
             Largest T*.
         word : str, optional
-            Free-group word in any of its forms, as published.
+            Free-group word in any of its forms, as published, whichever arc is silent in it.
         choreography : bool, optional
             Whether the three bodies share one curve.
         status : Status or str, optional
             ``verified`` or ``not confirmed``.
+        braid : str, optional
+            Kind of braid, cyclic word in L and R, or Artin word.
+        symmetry : str, optional
+            One of `orbitsearch.symmetry.NAMES`.
 
         Returns
         -------
@@ -163,10 +192,47 @@ class Catalog(Provenance):
         ------
         BadRequest
             For a bad letter in `word`, a `max_scaled_period` that is not positive, an unknown
-            `status`; at the call, not at the first record.
+            `status` or `symmetry`, a `braid` that is none; at the call, not at the first record.
         """
-        query = page_query(start, stable, max_scaled_period, word, choreography, status)
+        query = page_query(
+            start, stable, max_scaled_period, word, choreography, status, braid, symmetry
+        )
         return self._pages(*query)
+
+    def kinds(self) -> list[Kind]:
+        """The braid types of the catalogue.
+
+        Returns
+        -------
+        list of Kind
+            In order of their shortest T*.  Orbits of early versions whose type is not known are
+            left out; `untyped` counts them.
+        """
+        with self._reading() as connection:
+            return [kind_of_row(row) for row in connection.execute(KINDS)]
+
+    def untyped(self) -> list[int]:
+        """Numbers of the records whose type a catalogue of version 1 left open."""
+        with self._reading() as connection:
+            rows = connection.execute(
+                "SELECT id FROM orbits WHERE id NOT IN (SELECT orbit_id FROM kinds) ORDER BY id"
+            ).fetchall()
+        return [id for (id,) in rows]
+
+    def word_lengths(self, kind: str) -> list[tuple[int, float, int]]:
+        """Number, T* and length of the word of every orbit with a start in one set.
+
+        Parameters
+        ----------
+        kind : str
+            Name of the start set.
+        """
+        with self._reading() as connection:
+            return connection.execute(
+                "SELECT id, scaled_period, word_length FROM orbits "
+                "WHERE id IN (SELECT orbit_id FROM starts WHERE kind = ?) ORDER BY id",
+                (kind,),
+            ).fetchall()
 
     def get(self, id: int) -> Record:
         """Record of a number.
@@ -174,6 +240,7 @@ class Catalog(Provenance):
         Parameters
         ----------
         id : int
+            Also that of a record which was merged into another one.
 
         Returns
         -------
@@ -185,7 +252,7 @@ class Catalog(Provenance):
             When there is none.
         """
         with self._reading() as connection:
-            self._check_orbit(id, "id")
+            id = self._check_orbit(id, "id")
             return record_of_row(connection.execute(RECORD_BY_ID, (id,)).fetchone())
 
     def starts(self, kind: str) -> list[StartPoint]:
@@ -221,8 +288,8 @@ class Catalog(Provenance):
             id, scaled_period = rows[-1][:2]
             last = (scaled_period, id)
 
-    def _same(self, orbit: Orbit) -> Record | None:
-        """Record of the same orbit among the few that could be."""
+    def _same(self, orbit: Orbit) -> list[Record]:
+        """Records of the same orbit: those with a shared start, then by their invariants."""
         candidates: set[tuple[int]] = set()
         for start in all_starts(orbit):
             near_p, near_q = (2 * START_EQUAL * max(1.0, abs(x)) for x in (start.p, start.q))
@@ -248,5 +315,4 @@ class Catalog(Provenance):
         )
         records = (self.get(id) for (id,) in sorted(candidates))
         same = [record for record in records if same_orbit(record.orbit, orbit)]
-        shared = [record for record in same if shares_start(record.orbit, orbit)]
-        return next(iter(shared + same), None)
+        return sorted(same, key=lambda record: not shares_start(record.orbit, orbit))

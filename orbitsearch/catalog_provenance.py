@@ -130,7 +130,7 @@ class Provenance(CatalogFile):
         key = (citation, label, kind, p, q, period)
         with self._writing() as connection:
             if orbit_id is not None:
-                self._check_orbit(orbit_id, "orbit_id")
+                orbit_id = self._check_orbit(orbit_id, "orbit_id")
             connection.execute(
                 "INSERT INTO sources (orbit_id, citation, label, kind, p, q, period, outcome) "
                 "VALUES (?, ?, ?, ?, ?, ?, ?, ?) "
@@ -176,16 +176,22 @@ class Provenance(CatalogFile):
                 "list the runs for the others"
             )
 
-    def _check_orbit(self, id: int, name: str) -> None:
-        # SQLite's integers end at 64 bits; a number beyond them names nothing either.
+    def _check_orbit(self, id: int, name: str) -> int:
+        """The number itself, or that of the record it was merged into."""
         found = None
+        # SQLite's integers end at 64 bits; a number beyond them names nothing either.
         if abs(id) < 2**63:
-            found = self._connection.execute("SELECT 1 FROM orbits WHERE id = ?", (id,)).fetchone()
+            found = self._connection.execute(
+                "SELECT id FROM orbits WHERE id = ?1 "
+                "UNION ALL SELECT orbit_id FROM merged WHERE id = ?1",
+                (id,),
+            ).fetchone()
         if found is None:
             raise BadRequest(
                 f"`{name}` must name a record of this catalogue, got {id}: "
                 "list the catalogue for the others"
             )
+        return int(found[0])
 
 
 def _run(row: tuple[Any, ...]) -> Run:

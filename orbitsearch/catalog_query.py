@@ -8,12 +8,14 @@ import json
 from dataclasses import replace
 from typing import Any
 
+from orbitsearch.braids import Braid, read_braid
+from orbitsearch.cycles import cycle_of_word
 from orbitsearch.errors import BadCatalog, BadRequest
 from orbitsearch.orbit import Orbit, Start, Status
-from orbitsearch.records import Record, Source
-from orbitsearch.words import canonical_word
+from orbitsearch.records import Kind, Record, Source
+from orbitsearch.symmetry import check_name
 
-__all__ = ["PAGE", "RECORD_BY_ID", "page_query", "record_of_row"]
+__all__ = ["KINDS", "PAGE", "RECORD_BY_ID", "kind_of_row", "page_query", "record_of_row"]
 
 PAGE = 500
 """Records to a page: a few megabytes at most."""
@@ -32,6 +34,24 @@ RECORD_BY_ID = _COLUMNS + " WHERE id = ?"
 """Statement that reads the record of one id."""
 
 
+KINDS = """
+    SELECT braid_cycle, exponent_sum, count(*), sum(choreography), sum(linearly_stable),
+        min(scaled_period), id
+    FROM kinds JOIN orbits ON id = orbit_id
+    GROUP BY braid_cycle, exponent_sum ORDER BY min(scaled_period), braid_cycle, exponent_sum
+"""
+"""Statement that groups the records by braid type.
+
+Beside min(), SQLite takes a bare column, here the number, from the row that has the minimum.
+"""
+
+
+def kind_of_row(row: tuple[Any, ...]) -> Kind:
+    """Kind of one row of `KINDS`."""
+    cycle, exponent_sum, *rest = row
+    return Kind(Braid(cycle, exponent_sum), *rest)
+
+
 def page_query(
     start: str | None = None,
     stable: bool | None = None,
@@ -39,6 +59,8 @@ def page_query(
     word: str | None = None,
     choreography: bool | None = None,
     status: Status | str | None = None,
+    braid: str | None = None,
+    symmetry: str | None = None,
 ) -> tuple[str, list[Any]]:
     """Statement for one page of the records that meet every condition, in order of T*, then id.
 
@@ -51,11 +73,15 @@ def page_query(
     max_scaled_period : float, optional
         Largest T*.
     word : str, optional
-        Free-group word, in any form that `canonical_word` makes equal.
+        Free-group word of the same motion, in any form and with any arc silent.
     choreography : bool, optional
         Whether the three bodies share one curve.
     status : Status or str, optional
         ``verified`` or ``not confirmed``.
+    braid : str, optional
+        Kind of braid, cyclic word in L and R, or Artin word, as `orbitsearch.braids` reads them.
+    symmetry : str, optional
+        One of `orbitsearch.symmetry.NAMES`.
 
     Returns
     -------
@@ -67,7 +93,8 @@ def page_query(
     Raises
     ------
     BadRequest
-        For a bad letter in `word`, a `max_scaled_period` that is not positive, an unknown `status`.
+        For a bad letter in `word`, a `max_scaled_period` that is not positive, an unknown `status`
+        or `symmetry`, a `braid` that is none.
     """
     conditions: list[str] = []
     values: list[Any] = []
@@ -80,8 +107,9 @@ def page_query(
         conditions.append("scaled_period <= ?")
         values.append(max_scaled_period)
     if word is not None:
-        conditions.append("word = ?")
-        values.append(canonical_word(word))
+        # Not the word itself: a published one may have another arc silent than ours.
+        conditions.append("cycle = ?")
+        values.append(cycle_of_word(word))
     if stable is not None:
         conditions.append("linearly_stable = ?")
         values.append(int(stable))
@@ -97,11 +125,36 @@ def page_query(
             "EXISTS (SELECT 1 FROM starts WHERE starts.orbit_id = orbits.id AND +kind = ?)"
         )
         values.append(start)
+    for column, value in (*_braid_columns(braid), *_symmetry_columns(symmetry)):
+        # The plus again: a type may be that of nearly all orbits, and sorting them for each page
+        # would cost more than looking at each once.
+        conditions.append(
+            f"EXISTS (SELECT 1 FROM kinds WHERE orbit_id = orbits.id AND +{column} ?)"
+        )
+        values.append(value)
     # Pages, not one long cursor: an open cursor would pin an old state of the file, and whoever
     # adds an orbit while listing would be refused as soon as a second process has written.
     conditions.append("(scaled_period, id) > (?, ?)")
     where = " AND ".join(conditions)
     return f"{_COLUMNS} WHERE {where} ORDER BY scaled_period, id LIMIT ?", values
+
+
+def _braid_columns(text: str | None) -> list[tuple[str, str | int]]:
+    """What a wanted braid asks of the columns of `kinds`."""
+    if text is None:
+        return []
+    wanted = read_braid(text)
+    asked = {
+        "braid_kind =": wanted.kind,
+        "braid_cycle =": wanted.cycle,
+        "exponent_sum =": wanted.exponent_sum,
+    }
+    return [(column, value) for column, value in asked.items() if value is not None]
+
+
+def _symmetry_columns(name: str | None) -> list[tuple[str, str]]:
+    """What a wanted symmetry asks of the columns of `kinds`."""
+    return [] if name is None else [("symmetry LIKE", f"% {check_name(name)} %")]
 
 
 def _known_status(status: Status | str) -> str:

@@ -7,6 +7,7 @@ import json
 import math
 import sqlite3
 from collections.abc import Iterable
+from dataclasses import replace
 from datetime import UTC, datetime
 from typing import Any
 
@@ -16,7 +17,16 @@ from orbitsearch.identity import all_starts, new_starts
 from orbitsearch.orbit import Orbit, Start, Status
 from orbitsearch.records import Record
 
-__all__ = ["check", "insert_orbit", "insert_starts", "now", "replace_orbit", "tool_version"]
+__all__ = [
+    "check",
+    "fill_in_kind",
+    "insert_orbit",
+    "insert_starts",
+    "merge_records",
+    "now",
+    "replace_orbit",
+    "tool_version",
+]
 
 
 def check(orbit: Orbit) -> None:
@@ -70,9 +80,15 @@ def insert_orbit(
     int
         Number of the record.
     """
+    # The number of a record that was merged into another one stays taken.
+    (last,) = connection.execute(
+        "SELECT max((SELECT coalesce(max(id), 0) FROM orbits),"
+        " (SELECT coalesce(max(id), 0) FROM merged))"
+    ).fetchone()
     values = {**_columns(orbit), "created": now(), "run_id": run_id, "note": note}
-    id = _insert(connection, "orbits", values)
+    id = _insert(connection, "orbits", {"id": last + 1, **values})
     insert_starts(connection, id, all_starts(orbit), primary=orbit.start)
+    _insert_kind(connection, id, orbit)
     return id
 
 
@@ -98,6 +114,55 @@ def replace_orbit(
     verified = all_starts(orbit)
     kept = new_starts(old.orbit.starts, verified)
     insert_starts(connection, old.id, (*verified, *kept), primary=orbit.start)
+    _insert_kind(connection, old.id, orbit)
+
+
+def fill_in_kind(connection: sqlite3.Connection, old: Record, orbit: Orbit) -> None:
+    """Give a record of version 1 the type that it lacks, and change nothing else of it.
+
+    Parameters
+    ----------
+    connection : sqlite3.Connection
+    old : Record
+    orbit : Orbit
+        The same orbit with its type.
+    """
+    filled = replace(
+        old.orbit,
+        cycle=orbit.cycle,
+        word=orbit.word,
+        braid=orbit.braid,
+        symmetry=orbit.symmetry,
+        margins=orbit.margins,
+    )
+    columns = _columns(filled)
+    values = {name: columns[name] for name in ("cycle", "word", "word_length", "record")}
+    assignments = ", ".join(f"{name} = ?" for name in values)
+    connection.execute(f"UPDATE orbits SET {assignments} WHERE id = ?", (*values.values(), old.id))
+    _insert_kind(connection, old.id, orbit)
+
+
+def merge_records(connection: sqlite3.Connection, kept: Record, other: Record) -> None:
+    """Fuse a record with an older one of the same orbit, and let its number lead there.
+
+    Starts, published rows and notes go over.  The numbers of the kept record stay, since period
+    and energy belong to its own start.
+
+    Parameters
+    ----------
+    connection : sqlite3.Connection
+    kept, other : Record
+        `other` is gone afterwards.
+    """
+    insert_starts(connection, kept.id, new_starts(other.orbit.starts, kept.orbit.starts))
+    connection.execute("UPDATE sources SET orbit_id = ? WHERE orbit_id = ?", (kept.id, other.id))
+    connection.execute("UPDATE merged SET orbit_id = ? WHERE orbit_id = ?", (kept.id, other.id))
+    origin = "" if other.run_id is None else f", found by run {other.run_id}"
+    said = f"merged with orbit {other.id}, filed {other.created}{origin}"
+    parts = [part for part in (kept.note, said, other.note) if part]
+    connection.execute("UPDATE orbits SET note = ? WHERE id = ?", ("; ".join(parts), kept.id))
+    connection.execute("DELETE FROM orbits WHERE id = ?", (other.id,))
+    _insert(connection, "merged", {"id": other.id, "orbit_id": kept.id})
 
 
 def insert_starts(
@@ -180,6 +245,22 @@ def _columns(orbit: Orbit) -> dict[str, Any]:
         "cycle": orbit.cycle,
         "record": record,
     }
+
+
+def _insert_kind(connection: sqlite3.Connection, id: int, orbit: Orbit) -> None:
+    """File what an orbit is grouped and filtered by, in the place of what was there."""
+    connection.execute("DELETE FROM kinds WHERE orbit_id = ?", (id,))
+    if orbit.braid is None or orbit.symmetry is None:
+        return
+    values = {
+        "orbit_id": id,
+        "braid_kind": orbit.braid.braid.kind,
+        "braid_cycle": orbit.braid.braid.cycle,
+        "exponent_sum": orbit.braid.braid.exponent_sum,
+        # Blanks around each, so that "mirror" does not find "mirror-exchange".
+        "symmetry": f" {' '.join(orbit.symmetry.names)} ",
+    }
+    _insert(connection, "kinds", values)
 
 
 def _insert(connection: sqlite3.Connection, table: str, values: dict[str, Any]) -> int:

@@ -9,13 +9,17 @@ that out.  It could merge wrongly two orbits whose starts and T* both agree to s
 happens only beside a bifurcation, and masses here are fixed.  It could split wrongly a start
 known to fewer than seven digits; the second rule then still has its say.
 
-*No shared start, but equal invariants*: T*, syzygy cycle, rotation, choreography and stability
-traces.  It is needed because an orbit passes through two symmetric states (all others are their
-images under its own symmetries), and two searches may each have found one.  It could merge
+*No shared start, but equal invariants*: T*, syzygy cycle, braid, symmetry group, rotation and
+stability traces.  It is needed because an orbit passes through two symmetric states (all others are
+their images under its own symmetries), and two searches may each have found one.  It could merge
 wrongly two orbits of one family that are about to meet; they start close together but not at the
 same place, so a start that contradicts a complete list forbids it.  Where the traces are too
 uncertain to compare, it does not merge: an orbit filed twice is seen and can be put right, a lost
 one cannot.
+
+Scale, mirror image, direction and labels are gone from a start in standard form, and several turns
+round an orbit from every record, which is over the least period.  What is left to choose is which
+of its two starts stands for the orbit: `canonical_start`.
 """
 
 import math
@@ -26,16 +30,21 @@ from orbitsearch.orbit import Orbit, Start
 
 __all__ = [
     "PERIOD",
+    "SETS_IN_ORDER",
     "SHARED_PERIOD",
     "START_APART",
     "START_EQUAL",
     "all_starts",
+    "canonical_start",
     "new_starts",
     "same_orbit",
     "same_start",
     "shares_start",
     "start_distance",
 ]
+
+SETS_IN_ORDER = ("collinear", "isosceles", "rest", "perpendicular")
+"""Start sets by how widely orbits are published from them (common practice, no source)."""
 
 START_EQUAL = 1e-7
 """Largest difference of a parameter, over max(1, its size), of two equal starts: published rows
@@ -149,6 +158,30 @@ def all_starts(orbit: Orbit) -> tuple[Start, ...]:
     return orbit.starts if orbit.start in orbit.starts else (orbit.start, *orbit.starts)
 
 
+def canonical_start(orbit: Orbit) -> Start:
+    """The start that stands for an orbit whichever of its starts it was found from.
+
+    Parameters
+    ----------
+    orbit : Orbit
+        With its complete list of starts.
+
+    Returns
+    -------
+    Start
+        Of its starts in the first set of `SETS_IN_ORDER` that it has any in, the one with the least
+        first parameter; where those agree to `START_EQUAL`, with the least second.
+    """
+    starts = all_starts(orbit)
+    kind = min((start.kind for start in starts), key=SETS_IN_ORDER.index)
+    least, *others = (start for start in starts if start.kind == kind)
+    for start in others:
+        equal = abs(start.p - least.p) <= START_EQUAL
+        if (start.q < least.q) if equal else (start.p < least.p):
+            least = start
+    return least
+
+
 def new_starts(found: Iterable[Start], listed: Iterable[Start]) -> list[Start]:
     """Those of the starts found that are apart from every listed one and from each other.
 
@@ -193,9 +226,32 @@ def _invariants_agree(one: Orbit, other: Orbit) -> bool:
         _close(one.scaled_period, other.scaled_period, PERIOD)
         and one.cycle == other.cycle
         and one.choreography == other.choreography
+        and _braids_agree(one, other)
+        and _groups_agree(one, other)
         # The mirror image turns the other way, and -π is the same turn as π.
         and abs(abs(one.rotation) - abs(other.rotation)) <= ROTATION
         and _traces_agree(one, other)
+    )
+
+
+def _braids_agree(one: Orbit, other: Orbit) -> bool:
+    """Whether both orbits have the same braid, as far as it is known and certain."""
+    if one.braid is None or other.braid is None:
+        # Catalogues of version 1 lack the type of some orbits; that is no difference.
+        return True
+    if math.pi - abs(one.rotation) <= ROTATION:
+        # Half a turn of the whole is the same both ways, and its braid is one of two.
+        return True
+    return one.braid == other.braid
+
+
+def _groups_agree(one: Orbit, other: Orbit) -> bool:
+    """Whether both orbits have the same shifts and run through the same kinds of states."""
+    if one.symmetry is None or other.symmetry is None:
+        return True
+    return (
+        one.symmetry.names == other.symmetry.names
+        and one.symmetry.reversals == other.symmetry.reversals
     )
 
 

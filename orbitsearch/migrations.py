@@ -5,8 +5,14 @@ version number, so a file is never between two versions, whatever kills the proc
 ever added at the end: one that has shipped is never edited, since files made by it exist.
 """
 
+import json
 import sqlite3
 from collections.abc import Callable
+from typing import Any
+
+from orbitsearch import symmetry
+from orbitsearch.braid_type import BraidType
+from orbitsearch.cycles import canonical_cycle, shortest_word, word_of_cycle
 
 __all__ = ["APPLICATION_ID", "STEPS", "migrate", "read_version"]
 
@@ -98,7 +104,84 @@ def step_1(connection: sqlite3.Connection) -> None:
         connection.execute(statement)
 
 
-STEPS: tuple[Callable[[sqlite3.Connection], None], ...] = (step_1,)
+def step_2(connection: sqlite3.Connection) -> None:
+    """Give orbits their braid type and symmetry, words that do not depend on the start, and merges.
+
+    The type goes into `record` and, for browsing, into a table of its own: a column added to
+    `orbits` would stand behind the long text of the record.  An orbit without a row there is one of
+    version 1 whose type cannot be told from what was stored: between two mirror-symmetric states
+    nobody counted how often the bodies wind round each other.  It is filled in when the orbit is
+    verified or found again.
+
+    Parameters
+    ----------
+    connection : sqlite3.Connection
+        Inside a transaction; the file is of version 1.
+    """
+    for statement in (
+        """
+        CREATE TABLE kinds (
+            orbit_id INTEGER PRIMARY KEY REFERENCES orbits (id) ON DELETE CASCADE,
+            braid_kind TEXT NOT NULL,
+            braid_cycle TEXT NOT NULL,
+            exponent_sum INTEGER NOT NULL,
+            symmetry TEXT NOT NULL
+        )
+        """,
+        "CREATE INDEX kinds_by_braid ON kinds (braid_cycle, exponent_sum)",
+        """
+        CREATE TABLE merged (
+            id INTEGER PRIMARY KEY,
+            orbit_id INTEGER NOT NULL REFERENCES orbits (id) ON DELETE CASCADE
+        )
+        """,
+        # Words are looked up by their cycle from now on.
+        "DROP INDEX orbits_by_word",
+    ):
+        connection.execute(statement)
+    rows = connection.execute("SELECT id, start, record FROM orbits").fetchall()
+    for id, start, text in rows:
+        record = json.loads(text)
+        changed = _typed(start, record)
+        connection.execute(
+            "UPDATE orbits SET word = ?, word_length = ?, record = ? WHERE id = ?",
+            (changed["word"], len(changed["word"]), json.dumps(changed, separators=(",", ":")), id),
+        )
+        if changed["braid"] is not None:
+            braid, names = changed["braid"], changed["symmetry"]["names"]
+            connection.execute(
+                "INSERT INTO kinds VALUES (?, ?, ?, ?, ?)",
+                (id, braid["kind"], braid["cycle"], braid["exponent_sum"], f" {' '.join(names)} "),
+            )
+
+
+def _typed(start: str, record: dict[str, Any]) -> dict[str, Any]:
+    """Record of version 1 with its word by the rule of version 2, braid type and symmetry.
+
+    The latter are None where they do not follow from what version 1 stored.
+    """
+    # In standard form a start has body 3 in the special place; the solver noted the other end.
+    own = {"collinear": "C3", "isosceles": "I3", "rest": "rest", "perpendicular": "P"}[start]
+    end = record.get("solution", {}).get("condition", "")
+    ends = (own, end) if end in symmetry.REVERSALS else (own,)
+    middles = [label[1] for label in ends if label.startswith("C")]
+    syzygies = record["syzygies"]
+    record["cycle"] = canonical_cycle(syzygies)
+    record["word"] = (
+        word_of_cycle(syzygies, int(middles[0])) if middles else shortest_word(syzygies)
+    )
+    record |= {"braid": None, "symmetry": None, "margins": None}
+    if len(ends) == 2 and any(symmetry.REVERSALS[label].plane != "mirror" for label in ends):
+        group = symmetry.between(*ends)
+        # Which way the first alignment went was not stored; that only picks one of two mirror
+        # images.  A reversal that does not mirror forbids winding round: the sum is zero.
+        crossings = [(int(body), 1 - 2 * (n % 2)) for n, body in enumerate(syzygies)]
+        record["braid"] = BraidType.of(crossings, 0, group).to_json()
+        record["symmetry"] = group.to_json()
+    return record
+
+
+STEPS: tuple[Callable[[sqlite3.Connection], None], ...] = (step_1, step_2)
 """The step at index n takes version n to n + 1; their number is the current version."""
 
 

@@ -12,6 +12,11 @@ from dataclasses import asdict, dataclass, field, replace
 from enum import StrEnum
 from typing import Any
 
+from orbitsearch import period_law
+from orbitsearch.braid_type import BraidType
+from orbitsearch.symmetry import Symmetry
+from orbitsearch.words import root_and_power
+
 __all__ = ["Check", "Orbit", "Solution", "Stability", "Start", "Status", "Verdict"]
 
 
@@ -202,11 +207,21 @@ class Orbit:
     syzygies : str
         Middle body of every alignment along one period from the start.
     cycle : str
-        Reduced syzygy cycle in canonical form (`orbitsearch.words.canonical_cycle`).
+        Reduced syzygy cycle in canonical form (`orbitsearch.cycles.canonical_cycle`).
     word : str
-        Free-group word in canonical form (`orbitsearch.words.canonical_word`).
+        Free-group word in canonical form (`orbitsearch.words.canonical_word`).  The silent arc is
+        that of the body midway at a collinear start of the orbit, as in published lists, and where
+        there is none the one that makes the word least.
     starts : tuple of Start
         Every start of this orbit in every start set, `start` included.
+    braid : BraidType or None
+        None when it is not known: catalogues of early versions lack it for some orbits.
+    symmetry : Symmetry or None
+        The same.
+    margins : tuple of float or None
+        Least angle between the orbit and the equator of the shape sphere over all alignments, and
+        least distance of an alignment from a collision point, both in radians: how certain the
+        syzygies are.  Infinite when there are no alignments.
     """
 
     start: Start
@@ -223,6 +238,9 @@ class Orbit:
     stability: Stability
     verdict: Verdict
     starts: tuple[Start, ...] = ()
+    braid: BraidType | None = None
+    symmetry: Symmetry | None = None
+    margins: tuple[float, float] | None = None
     solution: Solution | None = field(default=None, compare=False)
 
     @property
@@ -234,6 +252,21 @@ class Orbit:
     def period(self) -> float:
         """Period from `start`, as a double."""
         return float(self.start.period)
+
+    @property
+    def word_power(self) -> int:
+        """How often the word goes round its own root: 7 for a seventh power of another motion."""
+        return root_and_power(self.word)[1]
+
+    @property
+    def period_per_letter(self) -> float | None:
+        """T* over the length of the word, None when the word is empty."""
+        return period_law.period_per_letter(self.scaled_period, len(self.word))
+
+    @property
+    def law_residual(self) -> float | None:
+        """`period_per_letter` less the published mean (`orbitsearch.period_law`)."""
+        return period_law.residual(self.scaled_period, len(self.word))
 
     def with_starts(self, starts: tuple[Start, ...]) -> Orbit:
         """Copy with another list of starts."""
@@ -255,7 +288,13 @@ class Orbit:
             "syzygies": self.syzygies,
             "cycle": self.cycle,
             "word": self.word,
+            "word_power": self.word_power,
             "choreography": self.choreography,
+            "braid": None if self.braid is None else self.braid.to_json(),
+            "symmetry": None if self.symmetry is None else self.symmetry.to_json(),
+            "margins": None if self.margins is None else list(self.margins),
+            "period_per_letter": self.period_per_letter,
+            "law_residual": self.law_residual,
             "stability": self.stability.to_json(),
             "verdict": {
                 "status": str(self.verdict.status),
@@ -280,6 +319,7 @@ class Orbit:
             for s in data["starts"]
         )
         first, second = data["parameters"]
+        braid, symmetry, margins = (data.get(key) for key in ("braid", "symmetry", "margins"))
         return cls(
             start=Start(data["start"], (first, second), repr(data["period"])),
             energy=data["energy"],
@@ -299,4 +339,7 @@ class Orbit:
                 tuple(Check(**check) for check in verdict["checks"]),
             ),
             starts=starts,
+            braid=None if braid is None else BraidType.from_json(braid),
+            symmetry=None if symmetry is None else Symmetry.from_json(symmetry),
+            margins=None if margins is None else (margins[0], margins[1]),
         )

@@ -3,9 +3,10 @@
 from dataclasses import dataclass
 from typing import Any, NamedTuple
 
+from orbitsearch.braids import Braid
 from orbitsearch.orbit import Orbit
 
-__all__ = ["Added", "NearStart", "Record", "Run", "Source", "StartPoint"]
+__all__ = ["Added", "Kind", "NearStart", "Record", "Run", "Source", "StartPoint"]
 
 
 class Added(NamedTuple):
@@ -28,6 +29,30 @@ class StartPoint(NamedTuple):
     p: float
     q: float
     scaled_period: float
+    orbit_id: int
+
+
+@dataclass(frozen=True)
+class Kind:
+    """All catalogued orbits of one braid type.
+
+    Attributes
+    ----------
+    braid : Braid
+        In canonical form.
+    count, choreographies, stable : int
+        Number of orbits, of choreographies and of linearly stable ones among them.
+    shortest : float
+        Least T*.
+    orbit_id : int
+        The record that has it.
+    """
+
+    braid: Braid
+    count: int
+    choreographies: int
+    stable: int
+    shortest: float
     orbit_id: int
 
 

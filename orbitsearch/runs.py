@@ -85,8 +85,11 @@ def run_search(
 
     def known(start: Start) -> bool:
         near = catalog.find_start(start.kind, start.p, start.q, START_EQUAL)
-        met.extend(Known(start, one.id) for one in near[:1])
-        return bool(near)
+        # A record of an early version without a type is worth meeting again: that fills it in.
+        if not near or catalog.get(near[0].id).orbit.braid is None:
+            return False
+        met.append(Known(start, near[0].id))
+        return True
 
     counts: Counter[str] = Counter()
     state = "stopped"

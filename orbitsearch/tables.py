@@ -10,18 +10,23 @@ import io
 import json
 import math
 from collections.abc import Callable, Iterable
+from decimal import Decimal
 from typing import Any
 
 from tabulate import tabulate
 
-from orbitsearch.orbit import Orbit
-from orbitsearch.records import Record
+from orbitsearch.braids import Braid
+from orbitsearch.identity import canonical_start
+from orbitsearch.orbit import Orbit, Start
+from orbitsearch.records import Kind, Record
 from orbitsearch.starts_table import RowOfStarts, read_starts_csv
+from orbitsearch.turns import cycle_text
 
 __all__ = [
     "COLUMNS",
     "RowOfStarts",
     "finite",
+    "kinds_to_text",
     "read_starts_csv",
     "to_csv",
     "to_json",
@@ -35,6 +40,29 @@ WORD_ROOM = 24
 
 def _angles(orbit: Orbit) -> str:
     return " ".join(map(repr, orbit.stability.angles))
+
+
+def _braid(orbit: Orbit, column: Callable[[Braid], Any]) -> str:
+    """A cell on the braid, empty where it is not known."""
+    return "" if orbit.braid is None else _text(column(orbit.braid.braid))
+
+
+def _text(value: Any) -> str:
+    """Every digit of a number, nothing for None."""
+    return "" if value is None else value if isinstance(value, str) else repr(value)
+
+
+def _start(start: Start) -> str:
+    return f"{start.kind} {' '.join(start.parameters)}"
+
+
+def _numbers(values: Iterable[float] | None) -> list[str]:
+    return [] if values is None else [*map(repr, values)]
+
+
+def _reversals(orbit: Orbit) -> str:
+    counts = {} if orbit.symmetry is None else orbit.symmetry.reversals
+    return " ".join(f"{name}:{count}" for name, count in counts.items())
 
 
 def _sources(record: Record) -> str:
@@ -53,7 +81,23 @@ COLUMNS: dict[str, Callable[[Record], str]] = {
     "rotation": lambda record: repr(record.orbit.rotation),
     "word": lambda record: record.orbit.word,
     "word_length": lambda record: str(len(record.orbit.word)),
+    "word_power": lambda record: str(record.orbit.word_power),
     "cycle": lambda record: record.orbit.cycle,
+    "braid_kind": lambda record: _braid(record.orbit, lambda braid: braid.kind),
+    "braid_cycle": lambda record: _braid(record.orbit, lambda braid: braid.cycle),
+    "exponent_sum": lambda record: _braid(record.orbit, lambda braid: braid.exponent_sum),
+    "trace": lambda record: _braid(record.orbit, lambda braid: braid.trace_text),
+    "dilatation": lambda record: _braid(record.orbit, lambda braid: braid.dilatation),
+    "entropy": lambda record: _braid(record.orbit, lambda braid: braid.entropy),
+    "windings": lambda record: " ".join(
+        _numbers(record.orbit.braid.windings if record.orbit.braid else None)
+    ),
+    "symmetry": lambda record: record.orbit.symmetry.title if record.orbit.symmetry else "",
+    "fraction": lambda record: f"1/{record.orbit.symmetry.pieces}" if record.orbit.symmetry else "",
+    "reversals": lambda record: _reversals(record.orbit),
+    "period_per_letter": lambda record: _text(record.orbit.period_per_letter),
+    "law_residual": lambda record: _text(record.orbit.law_residual),
+    "margins": lambda record: " ".join(_numbers(record.orbit.margins)),
     "stability": lambda record: record.orbit.stability.kind,
     "angles": lambda record: _angles(record.orbit),
     "max_multiplier": lambda record: repr(record.orbit.stability.max_multiplier),
@@ -65,12 +109,15 @@ COLUMNS: dict[str, Callable[[Record], str]] = {
     "created": lambda record: record.created,
     "tool_version": lambda record: record.tool_version,
     "note": lambda record: record.note,
+    "canonical_start": lambda record: _start(canonical_start(record.orbit)),
 }
 """Columns of the CSV table in order, and how a record fills them.
 
 `p`, `q` and `period` are the decimal text of the record's own start; the other numbers are doubles
-with all of their digits.  `angles` has zero, one or two numbers with blanks between, `sources` the
-published rows with semicolons between.
+with all of their digits.  `angles` has zero, one or two numbers with blanks between, `windings`
+three, `margins` the least angle and the least distance, `reversals` counts of states as in
+``collinear:6 isosceles:6``, `sources` the published rows with semicolons between.
+`canonical_start` is the same whichever start of an orbit was found.
 """
 
 
@@ -144,7 +191,8 @@ def to_latex(records: Iterable[Record]) -> str:
     str
         Starts and periods with all of their digits, words in full, T* to ten digits.
     """
-    headings = ["id", "start", "p", "q", "T", "T*", "rotation", "word", "stability"]
+    headings = ["id", "start", "p", "q", "T", "T*", "rotation", "word", "braid", "symmetry"]
+    headings += ["stability"]
     rows = [
         [
             str(record.id),
@@ -154,6 +202,8 @@ def to_latex(records: Iterable[Record]) -> str:
             f"{record.orbit.scaled_period:.10g}",
             f"{record.orbit.rotation:.10g}",
             record.orbit.word,
+            _braid(record.orbit, lambda braid: cycle_text(braid.cycle)),
+            record.orbit.symmetry.title if record.orbit.symmetry else "",
             record.orbit.stability.kind,
         ]
         for record in records
@@ -175,7 +225,7 @@ def to_text(records: Iterable[Record]) -> str:
         length behind.
     """
     headings = ["id", "start", "p", "q", "T", "T*", "rotation", "word", "stability"]
-    headings += ["choreography", "status"]
+    headings += ["symmetry", "status"]
     rows = [
         [
             str(record.id),
@@ -187,12 +237,49 @@ def to_text(records: Iterable[Record]) -> str:
             f"{record.orbit.rotation:.6g}",
             _short(record.orbit.word),
             record.orbit.stability.kind,
-            "yes" if record.orbit.choreography else "no",
+            record.orbit.symmetry.title if record.orbit.symmetry else "?",
             str(record.orbit.status),
         ]
         for record in records
     ]
     return _lay_out(headings, rows, "simple")
+
+
+def kinds_to_text(kinds: Iterable[Kind]) -> str:
+    """Table of braid types for a terminal.
+
+    Parameters
+    ----------
+    kinds : iterable of Kind
+
+    Returns
+    -------
+    str
+        Dilatations rounded; the last column has the record with the shortest T*.
+    """
+    headings = ["orbits", "braid", "cycle", "exponent sum", "trace", "dilatation"]
+    headings += ["choreographies", "stable", "least T*", "orbit"]
+    rows = [
+        [
+            str(kind.count),
+            kind.braid.kind,
+            _short(cycle_text(kind.braid.cycle)),
+            str(kind.braid.exponent_sum),
+            _short_number(kind.braid.trace),
+            f"{kind.braid.dilatation:.6g}",
+            str(kind.choreographies),
+            str(kind.stable),
+            f"{kind.shortest:.10g}",
+            str(kind.orbit_id),
+        ]
+        for kind in kinds
+    ]
+    return _lay_out(headings, rows, "simple")
+
+
+def _short_number(number: int) -> str:
+    """A whole number in full while it is short, rounded when it is not."""
+    return str(number) if number < 10**9 else f"{Decimal(number):.4e}"
 
 
 def _lay_out(headings: list[str], rows: list[list[str]], style: str) -> str:

@@ -13,12 +13,12 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from orbitsearch import bodies, flow, stability, words
-from orbitsearch.crossings import crossings
+from orbitsearch import bodies, flow, stability
+from orbitsearch.classify import Classification, classify
 from orbitsearch.errors import BadRequest
 from orbitsearch.independent import by_bodies, by_sides
 from orbitsearch.orbit import Check, Orbit, Start, Status, Verdict
-from orbitsearch.starts import CONDITIONS, StartSet, period_multiple
+from orbitsearch.starts import CONDITIONS, Condition, StartSet, period_multiple
 
 __all__ = ["BOUNDS", "verify"]
 
@@ -33,6 +33,7 @@ BOUNDS = {
     "angular momentum": 1e-10,
     "least separation": 1e-6,
     "multipliers": 1e-5,
+    "windings": 1e-3,
 }
 """Bound of each check; of least period and least separation a lower, of the others an upper one."""
 
@@ -60,24 +61,6 @@ class _Motion:
     half: flow.Trajectory
 
 
-def _angle(x: Array, y: Array) -> float:
-    """Angle by which y is x turned, in the sense of least squares."""
-    a, b = (z.reshape(6, 2) @ np.array([1.0, 1.0j]) for z in (x, y))
-    return float(np.angle(np.vdot(a, b)))
-
-
-def _distance(x: Array, y: Array, energy: float) -> float:
-    """Largest difference of a body's position or velocity, in the units of the energy."""
-    unit = abs(energy)
-    (r, v), (s, w) = bodies.sides_to_bodies(x), bodies.sides_to_bodies(y)
-    return float(
-        max(
-            np.linalg.norm(r - s, axis=1).max() * unit,
-            np.linalg.norm(v - w, axis=1).max() / np.sqrt(unit),
-        )
-    )
-
-
 def _decide(name: str, value: float, noise: float, note: str = "") -> Check:
     """Upper bound: passed, failed, or open when rounding alone may have made the value."""
     bound = BOUNDS[name]
@@ -96,7 +79,7 @@ def _second_opinions(motion: _Motion) -> tuple[Check, Check]:
     )
     # An integration that gave up says nothing: a closure, and a noise, beyond all bounds.
     noise, *closures = (
-        float(np.nan_to_num(_distance(a, b, energy), nan=LOST))
+        float(np.nan_to_num(bodies.distance(a, b, energy), nan=LOST))
         for a, b in ((inertial, sides), (x, inertial), (x, sides))
     )
     return (
@@ -105,14 +88,16 @@ def _second_opinions(motion: _Motion) -> tuple[Check, Check]:
     )
 
 
-def _least_period(motion: _Motion, returns: int, closure: float) -> Check:
-    """Nearest the orbit comes to its start, up to a rotation, after T/n for n up to `returns`."""
+def _least_period(motion: _Motion, closure: float) -> Check:
+    """Nearest the orbit comes to its start, up to a rotation, after T/n for every possible n."""
     bound = BOUNDS["least period"]
-    n = np.arange(2, max(returns, 2) + 1)
+    # Each turn has two alignments at least, unless the orbit has none at all.
+    alignments = int(np.count_nonzero(motion.half.events.functions == 0))
+    n = np.arange(2, max(alignments + 1, 2) + 1)
     best, which = np.inf, 0
     for k, state in zip(n, motion.half.states(motion.period / n), strict=True):
-        turned = bodies.turned(state, -_angle(motion.begin, state))
-        distance = _distance(motion.begin, turned, motion.energy)
+        turned = bodies.turned(state, -bodies.turn_between(motion.begin, state))
+        distance = bodies.distance(motion.begin, turned, motion.energy)
         if distance < best:
             best, which = distance, int(k)
     note = f"nearest at T/{which}"
@@ -120,20 +105,6 @@ def _least_period(motion: _Motion, returns: int, closure: float) -> Check:
         # It comes as near before the period as it does after it.
         return Check("least period", best, bound, None, note)
     return Check("least period", best, bound, best > bound, note)
-
-
-def _is_choreography(motion: _Motion) -> bool:
-    """Whether the bodies follow each other on one curve, a third of the period apart.
-
-    When the orbit turns as a whole, the curve is one in the frame that turns with it.
-    """
-    third = motion.half.states(np.array([motion.period / 3.0]))[0]
-    # The angle of a third is known up to a third of a turn only; without rotation it must be none.
-    turns = range(3) if motion.rotation else range(1)
-    back = [bodies.turned(third, -(motion.rotation + 2 * np.pi * k) / 3.0) for k in turns]
-    shifted = (np.roll(x.reshape(2, 3, 2), k, axis=1).ravel() for x in back for k in (1, 2))
-    distance = min(_distance(motion.begin, x, motion.energy) for x in shifted)
-    return distance < BOUNDS["least period"]
 
 
 def _least_separation(motion: _Motion) -> float:
@@ -154,8 +125,8 @@ def _integrate(x: Array, period: float, relative: bool) -> _Motion | Verdict:
             return Verdict(Status.REJECTED, f"cannot be followed over its period: {status}")
     energy = float(bodies.energy(x))
     ends = [bodies.turned(end, -a) for end, a in zip(whole.states, _DIRECTIONS, strict=True)]
-    noise = max(_distance(ends[0], end, energy) for end in ends[1:])
-    rotation = _angle(x, ends[0]) if relative else 0.0
+    noise = max(bodies.distance(ends[0], end, energy) for end in ends[1:])
+    rotation = bodies.turn_between(x, ends[0]) if relative else 0.0
     # An axis that comes back to itself to rounding has not turned at all.
     rotation = 0.0 if abs(rotation) < 1e-8 else rotation
     return _Motion(x, ends[0], period, energy, rotation, noise, half)
@@ -185,7 +156,8 @@ def verify(starts: StartSet, p: float, q: float, time: float, kind: int) -> Orbi
     -----
     Checks: closure of all bodies after T in the inertial frame (or after the stated rotation); no
     return after T/n for n up to half the number of alignments; drift of energy and angular
-    momentum; closure by scipy's DOP853; least separation; Floquet multipliers by two computations.
+    momentum; closure by scipy's DOP853; least separation; Floquet multipliers by two computations;
+    windings by two computations.
     """
     own, stop = starts.own, CONDITIONS[kind]
     period = period_multiple(own, stop) * time
@@ -196,18 +168,13 @@ def verify(starts: StartSet, p: float, q: float, time: float, kind: int) -> Orbi
         return motion
     arc = stability.Arc(x, motion.half.states(np.array([time]))[0], time, own, stop)
     traces, errors = stability.symmetric_traces(arc)
-    seen = crossings(own, motion.half)
-    syzygies = "".join(str(body) for body, _ in seen)
-    checks = _checks(motion, traces, len(seen) // 2)
+    kind_of, problem = _classify(own, motion)
+    checks = _checks(motion, traces, kind_of)
     verdict = _verdict(checks)
-    try:
-        word = words.canonical_word(words.free_group_word(seen))
-    except BadRequest as problem:
-        # Only half a period is read: of a motion that does not close, the rest is another one.
-        word = ""
-        if verdict.status is not Status.REJECTED:
-            reason = f"its alignments cannot be read: {problem}"
-            return Verdict(Status.REJECTED, reason, checks)
+    # Only half a period is read: of a motion that does not close, the rest is another one.
+    if problem and verdict.status is not Status.REJECTED:
+        reason = f"its alignments cannot be read: {problem}"
+        return Verdict(Status.REJECTED, reason, checks)
     start = Start.from_floats(starts.name, p, q, period)
     return Orbit(
         start=start,
@@ -217,22 +184,35 @@ def verify(starts: StartSet, p: float, q: float, time: float, kind: int) -> Orbi
         scaled_period=period * abs(motion.energy) ** 1.5,
         closure=verdict.value("closure"),
         least_separation=verdict.value("least separation"),
-        syzygies=syzygies,
-        cycle=words.canonical_cycle(syzygies),
-        word=word,
-        choreography=_is_choreography(motion),
+        syzygies=kind_of.syzygies if kind_of else "",
+        cycle=kind_of.cycle if kind_of else "",
+        word=kind_of.word if kind_of else "",
+        choreography=kind_of is not None and "choreography" in kind_of.symmetry.names,
+        braid=kind_of.braid if kind_of else None,
+        symmetry=kind_of.symmetry if kind_of else None,
+        margins=kind_of.margins if kind_of else None,
         stability=stability.classify(traces, errors),
         verdict=verdict,
         starts=(start,),
     )
 
 
-def _checks(motion: _Motion, traces: tuple[complex, complex], returns: int) -> tuple[Check, ...]:
+def _classify(own: Condition, motion: _Motion) -> tuple[Classification | None, str]:
+    """Kind of the orbit, or why it has none."""
+    try:
+        return classify(own, motion.half, motion.rotation), ""
+    except BadRequest as problem:
+        return None, str(problem)
+
+
+def _checks(
+    motion: _Motion, traces: tuple[complex, complex], kind_of: Classification | None
+) -> tuple[Check, ...]:
     """Every line of the verdict; `traces` are those computed from one arc."""
     x, energy = motion.begin, motion.energy
     direct, blur, growth = stability.direct_traces(x, motion.period, motion.rotation)
     noise = growth * ROUNDING + motion.noise
-    closure = _distance(x, bodies.turned(motion.end, -motion.rotation), energy)
+    closure = bodies.distance(x, bodies.turned(motion.end, -motion.rotation), energy)
     along = motion.half.states(motion.half.times)
     drift = float(np.abs(bodies.energy(along) / energy - 1.0).max())
     momentum = float(np.abs(bodies.angular_momentum(along)).max() * np.sqrt(abs(energy)))
@@ -241,13 +221,20 @@ def _checks(motion: _Motion, traces: tuple[complex, complex], returns: int) -> t
     return (
         _decide("closure", closure, noise),
         *_second_opinions(motion),
-        _least_period(motion, returns, closure),
+        _least_period(motion, closure),
         # Beside a close approach energy is the small difference of two large numbers.
         _decide("energy drift", drift, ROUNDING / separation),
         _decide("angular momentum", momentum, 0.0),
         Check("least separation", separation, least, separation > least),
         _decide("multipliers", difference, blur + growth * noise, "two computations"),
+        *([_windings(kind_of, noise)] if kind_of else []),
     )
+
+
+def _windings(kind_of: Classification, noise: float) -> Check:
+    """How far the windings are from integers; infinite where the alignments ask for others."""
+    note = "" if kind_of.braid else "not those of the alignments"
+    return _decide("windings", kind_of.winding_error, noise, note)
 
 
 def _verdict(checks: tuple[Check, ...]) -> Verdict:

@@ -1,16 +1,17 @@
-"""Words of closed motions: free-group words in a, b and cycles of the bodies seen in the middle.
+"""Words of closed motions in the free group on a and b.
 
 A closed motion of three bodies that never meet is a closed curve on the shape sphere without its
 three collision points.  The equator (three bodies in line) falls into three arcs named after the
-body in the middle.  Written down as the curve crosses them, the arcs alone give the *syzygy cycle*;
-with the direction of each crossing, and the arc of body 3 left silent, they give a word of the free
-group on a and b, the *free-group word*.  Words are plain strings: ``A`` is the inverse of ``a`` and
-``B`` that of ``b``; cycles are strings over ``1``, ``2``, ``3``.
+body in the middle.  The arcs that the curve crosses, each with the direction of the crossing, and
+the arc of one body left silent, give a word of the free group on a and b, the *free-group word*.
+Words are plain strings: ``A`` is the inverse of ``a`` and ``B`` that of ``b``.  The arcs alone,
+without directions, are the subject of `orbitsearch.cycles`.
 
 Which words name the same motion
 --------------------------------
-Twice the signed area D = (r2 - r1) x (r3 - r1) orients a crossing: body 2 in the middle while D
-goes from + to - is a, body 1 is b, and from - to + are the inverses.  Then
+Twice the signed area D = (r2 - r1) x (r3 - r1) orients a crossing.  With the arc of body 3 silent,
+body 2 in the middle while D goes from + to - is a, body 1 is b, and from - to + are the inverses;
+with another arc silent the bodies move up around, and D stays as it is.  Then
 
 * another first moment on the curve rotates the cyclically reduced word (conjugation);
 * running backwards reverses the order *and* turns every crossing: the inverse word;
@@ -24,31 +25,34 @@ inversion and exchange only.  On orbits from a collinear start both agree: such 
 point reflection, exchange of 1 and 2, and reversal, so its word read backwards with a and b
 exchanged is conjugate to itself, which makes the mirror the product of inversion and exchange.
 
-Relabellings that move body 3 are *not* folded in: they change which arc is silent, hence the length
-of the word, and a word would no longer look like the published one.  The syzygy cycle carries no
-directions, so `canonical_cycle` folds in all six relabellings, and the mirror image for free.
+Relabellings that move the silent body are *not* folded in: they change which arc is silent, hence
+the length of the word, and a word would no longer look like the published one.  A cycle has no
+silent arc, and `orbitsearch.cycles.cycle_of_word` finds it whatever arc an author left out.
 """
 
 from collections.abc import Iterable, Iterator
-from itertools import permutations, product
 
-from orbitsearch._letters import cancel, least_rotation, strip_ends
-from orbitsearch.errors import BadRequest
+from orbitsearch._letters import (
+    arcs_heard,
+    cancel,
+    check_letters,
+    crossing_letters,
+    least_image,
+    primitive_root,
+    strip_ends,
+)
 
 __all__ = [
-    "canonical_cycle",
     "canonical_word",
     "contains",
     "cyclically_reduce",
     "free_group_word",
     "invert",
-    "reduce_cycle",
     "reduce_word",
+    "root_and_power",
 ]
 
 _EXCHANGE = str.maketrans("abAB", "baBA")
-_LETTER_OF_MIDDLE = {1: "b", 2: "a", 3: ""}
-_RELABELLINGS = tuple(str.maketrans("123", "".join(p)) for p in permutations("123"))
 
 
 def reduce_word(word: str) -> str:
@@ -74,7 +78,7 @@ def reduce_word(word: str) -> str:
     >>> reduce_word("abBA"), reduce_word("abAAb")
     ('', 'abAAb')
     """
-    _check(word, "abAB", "word", "write a, b and their inverses A, B, as in abAB")
+    check_letters(word, "abAB", "word", "write a, b and their inverses A, B, as in abAB")
     return cancel(word, str.swapcase)
 
 
@@ -127,7 +131,7 @@ def invert(word: str) -> str:
     >>> invert("abA")
     'aBA'
     """
-    _check(word, "abAB", "word", "write a, b and their inverses A, B, as in abAB")
+    check_letters(word, "abAB", "word", "write a, b and their inverses A, B, as in abAB")
     return word[::-1].swapcase()
 
 
@@ -156,11 +160,12 @@ def canonical_word(word: str) -> str:
     ('abAB', 'aa')
     """
     reduced = cyclically_reduce(word)
-    # In ASCII capitals come first, so letters with their case swapped sort as a < b < A < B.
-    return min(least_rotation(w.swapcase()) for w in _variants(reduced)).swapcase()
+    # In ASCII capitals come first, so letters with their case swapped sort as a < b < A < B; the
+    # variants as a whole do not change under that swap.
+    return least_image(_variants(reduced), "ABab").swapcase()
 
 
-def free_group_word(crossings: Iterable[tuple[int, int]]) -> str:
+def free_group_word(crossings: Iterable[tuple[int, int]], silent: int = 3) -> str:
     """Freely reduced word of a motion from its crossings of the equator, in order of time.
 
     Parameters
@@ -168,11 +173,14 @@ def free_group_word(crossings: Iterable[tuple[int, int]]) -> str:
     crossings : iterable of (int, int)
         Body in the middle (1, 2 or 3) and direction: +1 when twice the signed area
         (r2 - r1) x (r3 - r1) goes from + to -, and -1 when it goes from - to +.
+    silent : int
+        Body whose arc has no letter.
 
     Returns
     -------
     str
-        Letters ``a`` (body 2), ``b`` (body 1), inverses for direction -1, nothing for body 3.
+        Letters ``a`` and ``b`` for the bodies one and two before the silent one, counted around
+        (bodies 2 and 1 when 3 is silent), inverses for direction -1.
 
     Raises
     ------
@@ -183,88 +191,48 @@ def free_group_word(crossings: Iterable[tuple[int, int]]) -> str:
 
     Examples
     --------
-    >>> free_group_word([(3, 1), (1, -1), (2, 1), (3, -1), (1, 1), (2, -1)])
-    'BabA'
+    >>> eight = [(3, 1), (1, -1), (2, 1), (3, -1), (1, 1), (2, -1)]
+    >>> free_group_word(eight), free_group_word(eight, silent=1)
+    ('BabA', 'abAB')
     """
-    letters = []
-    before = 0
-    for place, (middle, direction) in enumerate(crossings, start=1):
-        if middle not in _LETTER_OF_MIDDLE:
-            raise BadRequest(
-                f"`crossings` must name the middle body as 1, 2 or 3, got {middle!r} at crossing "
-                f"{place}: number the bodies from 1"
-            )
-        if direction not in (1, -1):
-            raise BadRequest(
-                f"`crossings` must have direction 1 or -1, got {direction!r} at crossing {place}: "
-                "use 1 where the signed area goes from + to -"
-            )
-        if direction == before:
-            raise BadRequest(
-                f"`crossings` must alternate in direction, got {direction} twice at crossing "
-                f"{place}: one in between was missed, follow the motion with smaller steps"
-            )
-        before = direction
-        letter = _LETTER_OF_MIDDLE[middle]
-        letters.append(letter if direction == 1 else letter.swapcase())
-    return cancel("".join(letters), str.swapcase)
+    a, b = arcs_heard(silent)
+    letters = crossing_letters(crossings)
+    names = dict.fromkeys("xyzXYZ", "")
+    for body, letter in ((a, "a"), (b, "b")):
+        names["xyz"[body - 1]] = letter
+        names["XYZ"[body - 1]] = letter.swapcase()
+    return cancel("".join([names[letter] for letter in letters]), str.swapcase)
 
 
-def reduce_cycle(cycle: str) -> str:
-    """Cancel equal neighbours of a syzygy cycle, also around its end.
+def root_and_power(word: str) -> tuple[str, int]:
+    """The motion that a word runs round more than once, and how often it does.
 
     Parameters
     ----------
-    cycle : str
-        Middle bodies ``1``, ``2``, ``3`` along one period.
+    word : str
+        Letters ``a``, ``b``, ``A``, ``B``.
 
     Returns
     -------
-    str
-        Cyclically reduced word of Z2 * Z2 * Z2 (each body its own inverse).
+    root : str
+        Canonical word of the motion run round once; it is no proper power itself.
+    n : int
+        The motion of `word` is n turns of `root`: ``canonical_word(word) == root * n``.  The
+        trivial word has the root ``""`` and n = 1.
 
     Raises
     ------
     BadRequest
-        When `cycle` holds any other character.
+        When `word` holds any other character.
 
     Examples
     --------
-    >>> reduce_cycle("2133123212")
-    '3212'
+    >>> root_and_power("BabABabA"), root_and_power("abAB"), root_and_power("aA")
+    (('abAB', 2), ('abAB', 1), ('', 1))
     """
-    _check(cycle, "123", "cycle", "write the middle bodies, as in 123123")
-    return strip_ends(cancel(cycle, str), str)
-
-
-def canonical_cycle(cycle: str) -> str:
-    """Name shared by all syzygy cycles of one motion: the least one.
-
-    Parameters
-    ----------
-    cycle : str
-        Middle bodies ``1``, ``2``, ``3`` along one period.
-
-    Returns
-    -------
-    str
-        The least string over rotations of the reduced cycle, the six relabellings and reversal.
-
-    Raises
-    ------
-    BadRequest
-        When `cycle` holds any other character.
-
-    Examples
-    --------
-    >>> canonical_cycle("312312"), canonical_cycle("3221")
-    ('123123', '12')
-    """
-    reduced = reduce_cycle(cycle)
-    return min(
-        least_rotation(turned.translate(labels))
-        for turned, labels in product((reduced, reduced[::-1]), _RELABELLINGS)
-    )
+    # In a free group a cyclically reduced word is a power exactly when its letters repeat, and the
+    # least of all images repeats the least of the images of the root.
+    return primitive_root(canonical_word(word))
 
 
 def contains(word: str, part: str) -> bool:
@@ -304,13 +272,3 @@ def _variants(word: str) -> Iterator[str]:
         for mirrored in (turned, turned.swapcase()):
             yield mirrored
             yield mirrored.translate(_EXCHANGE)
-
-
-def _check(text: str, alphabet: str, name: str, advice: str) -> None:
-    """Raise BadRequest at the first character that is no letter of the alphabet."""
-    for place, letter in enumerate(text, start=1):
-        if letter not in alphabet:
-            raise BadRequest(
-                f"`{name}` must use only the letters {', '.join(alphabet)}, got {letter!r} at "
-                f"place {place}: {advice}"
-            )

@@ -23,7 +23,8 @@ EIGHT_GUESS = ("--start", "collinear", "--at", "0.347117", "0.532725", "--period
 ORBIT_FIELDS = {
     "status", "start", "parameters", "period", "energy", "angular_momentum", "rotation",
     "scaled_period", "closure", "least_separation", "syzygies", "word", "stability",
-    "choreography",
+    "choreography", "braid", "symmetry", "margins", "period_per_letter", "law_residual",
+    "word_power",
 }  # fmt: skip
 
 
@@ -92,5 +93,12 @@ def check_orbit(value: dict[str, Any]) -> None:
     assert set(value["syzygies"]) <= set("123")
     assert set(value["word"]) <= set("abAB")
     assert isinstance(value["choreography"], bool)
+    if value["braid"] is None:
+        # A motion that does not close has no kind.
+        assert value["status"] == "rejected"
+    else:
+        assert value["braid"].keys() >= {"kind", "trace", "dilatation", "cycle", "windings"}
+        assert isinstance(value["braid"]["trace"], int)
+        assert value["choreography"] == ("choreography" in value["symmetry"]["names"])
     assert value["stability"].keys() >= {"kind", "angles", "max_multiplier"}
     assert value["energy"] < 0 < value["least_separation"]

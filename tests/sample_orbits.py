@@ -7,7 +7,10 @@ them; all else about these values is made up to exercise storage, and says nothi
 import math
 from dataclasses import replace
 
+from orbitsearch.braid_type import BraidType
+from orbitsearch.braids import Braid
 from orbitsearch.orbit import Check, Orbit, Stability, Start, Status, Verdict
+from orbitsearch.symmetry import between
 
 # C. Moore, PRL 70 (1993) 3675; A. Chenciner & R. Montgomery, Ann. Math. 152 (2000) 881; digits
 # recomputed.
@@ -59,7 +62,16 @@ def figure_eight() -> Orbit:
             (Check("closure", 1.5e-14, 1e-10, True), Check("digits", math.nan, 12.0, None, "n/a")),
         ),
         starts=(EIGHT,),
+        braid=pure_braid(3, part=3),
+        symmetry=between("C3", "I2"),
+        margins=(0.8, 1.04),
     )
+
+
+def pure_braid(turns: int, part: int = 1) -> BraidType:
+    """Braid type of LR so many times, without winding; `part` must divide the number."""
+    braid = Braid.from_artin([1, -2]).canonical()
+    return BraidType(braid.power(turns).canonical(), (0, 0, 0), part, braid.power(turns // part))
 
 
 def twin() -> Orbit:
@@ -70,6 +82,8 @@ def twin() -> Orbit:
         scaled_period=TWIN_SCALED_PERIOD,
         choreography=False,
         starts=(TWIN,),
+        braid=pure_braid(3),
+        symmetry=between("C3", "I3"),
     )
 
 
@@ -84,6 +98,8 @@ def numbered(n: int) -> Orbit:
         word="abAB" * (n + 2),
         cycle="123123" * (n + 2),
         choreography=n % 3 == 0,
+        braid=pure_braid(3 * (n + 2)),
+        symmetry=between("C3", "I1" if n % 3 == 0 else "I3"),
         stability=hyperbolic(7.5 + n, 3.25) if n % 2 else elliptic(0.1, 0.2),
         starts=(first, second),
     )

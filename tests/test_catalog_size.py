@@ -26,7 +26,7 @@ def many(tmp_path_factory: pytest.TempPathFactory) -> Iterator[Catalog]:
             "id": "n",
             "scaled_period": "10 + (n * 7919 % 30011) / 1000.0",
             "word": "CASE n % 1000 WHEN 0 THEN 'abAB' ELSE 'aabaBaB' END",
-            "cycle": "'123123' || n",
+            "cycle": "CASE n % 1000 WHEN 0 THEN '123123' ELSE '1213' || n END",
             "linearly_stable": "n % 500 = 0",
         }
         numbers = (
@@ -41,6 +41,11 @@ def many(tmp_path_factory: pytest.TempPathFactory) -> Iterator[Catalog]:
             f"{numbers} INSERT INTO starts (orbit_id, kind, p, q, period, p_real, q_real, "
             "period_real, is_primary) SELECT n, kind, n / 1e6, q, period, n / 1e6, q_real, "
             "period_real, is_primary FROM k, starts WHERE orbit_id = 1 AND is_primary"
+        )
+        # A thousand types, and one choreography in a hundred.
+        connection.execute(
+            f"{numbers} INSERT INTO kinds SELECT n, 'pseudo-Anosov', 'LR', 6 * (n % 1000), "
+            "CASE n % 100 WHEN 0 THEN ' choreography cyclic ' ELSE ' mirror ' END FROM k"
         )
         connection.execute("COMMIT")
         yield catalog
@@ -60,9 +65,10 @@ def plan(catalog: Catalog, **conditions: object) -> str:
     [
         ({}, "orbits_by_period (scaled_period>"),
         ({"max_scaled_period": 20.0}, "orbits_by_period (scaled_period>? AND scaled_period<?"),
-        ({"word": "abAB"}, "orbits_by_word (word=? AND scaled_period>"),
+        ({"word": "abAB"}, "orbits_by_cycle (cycle=? AND scaled_period>"),
         ({"stable": True, "start": "rest"}, "orbits_by_period (scaled_period>"),
         ({"status": "verified", "choreography": True}, "orbits_by_period (scaled_period>"),
+        ({"braid": "(LR)^2", "symmetry": "mirror"}, "orbits_by_period (scaled_period>"),
     ],
     ids=str,
 )
@@ -134,6 +140,23 @@ def test_cycles_have_an_index_of_their_own(many: Catalog) -> None:
     (lookup,) = (statement for statement in statements if "cycle =" in statement)
     (row,) = many._connection.execute(f"EXPLAIN QUERY PLAN {lookup}")
     assert "USING COVERING INDEX orbits_by_cycle (cycle=? AND scaled_period>" in row[3]
+
+
+def test_types_are_grouped_at_a_few_steps_an_orbit(many: Catalog) -> None:
+    with counted(many) as steps:
+        kinds = many.kinds()
+    assert len(kinds) == 1001
+    assert sum(kind.count for kind in kinds) == MANY
+    assert steps() < 100 * MANY
+
+
+def test_orbits_of_a_type_are_found_in_one_pass(many: Catalog) -> None:
+    with counted(many) as steps:
+        found = list(many.orbits(symmetry="choreography", max_scaled_period=11.0))
+    assert found
+    assert all(record.id % 100 == 0 for record in found)
+    within = many._connection.execute("SELECT count(*) FROM orbits WHERE scaled_period <= 11")
+    assert steps() < 100 * within.fetchone()[0] + 200 * len(found)
 
 
 def test_a_filter_finds_in_the_whole_catalogue(many: Catalog) -> None:

@@ -39,7 +39,10 @@ def test_search_prints_counts_and_a_table_of_what_is_new(capsys, tmp_path: Path)
     assert "64 starts, 0 skipped" in ran.out
     table = [line.split() for line in ran.out.splitlines() if " collinear " in line]
     assert [row[5] for row in table] == ["9.237681251", "9.237682751"]
-    assert [row[-2:] for row in table] == [["yes", "verified"], ["no", "verified"]]
+    assert [row[-3:] for row in table] == [
+        ["choreography,", "mirror", "verified"],
+        ["elliptic-hyperbolic", "mirror", "verified"],
+    ]
     assert ran.out.splitlines()[-1] == f"2 new, 0 known orbits; catalogue {path}, run 1"
 
 

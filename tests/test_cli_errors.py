@@ -134,7 +134,7 @@ def test_an_unknown_number_is_refused(capsys, filed: Path, command, number) -> N
 @pytest.mark.parametrize(
     ("filters", "reason"),
     [
-        (["--word", "abc"], "`word` must use only the letters a, b, A, B, got 'c' at place 3"),
+        (["--word", "abc"], "`--word` must use only the letters a, b, A, B, got 'c' at place 3"),
         (["--max-scaled-period", "nan"], "`--max-scaled-period` must be positive, got nan"),
         (["--max-scaled-period", "-1"], "`--max-scaled-period` must be positive, got -1"),
         (["--start", "square"], "`start` must be one of collinear, isosceles"),

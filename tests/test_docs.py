@@ -12,6 +12,7 @@ import orbitsearch
 from orbitsearch.cli.commands import COMMANDS
 from orbitsearch.cli.parser import make_parser
 from orbitsearch.starts import START_SETS
+from orbitsearch.symmetry import NAMES
 
 ROOT = Path(orbitsearch.__file__).parent.parent
 README = (ROOT / "README.md").read_text(encoding="utf-8")
@@ -63,6 +64,11 @@ def test_readme_opens_with_the_job_and_the_caution():
 
 def test_every_start_set_is_described():
     for name in START_SETS:
+        assert f"| `{name}` |" in README
+
+
+def test_every_symmetry_is_described():
+    for name in NAMES:
         assert f"| `{name}` |" in README
 
 

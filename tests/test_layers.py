@@ -20,20 +20,26 @@ ROOT = Path(orbitsearch.__file__).parent
 FLOORS: tuple[dict[str, tuple[str, ...]], ...] = (
     {"errors": ("errors",), "kernels": ("_kernels",)},
     {
-        "words": ("words", "_letters"),
+        "words": ("words", "cycles", "artin", "turns", "braids", "_letters"),
+        "symmetry": ("symmetry",),
+        "period law": ("period_law",),
         "workers": ("workers",),
         "bodies": ("bodies",),
-        "migrations": ("migrations",),
+    },
+    {"braid type": ("braid_type",)},
+    {
         "orbit": ("orbit", "records"),
+        "migrations": ("migrations",),
     },
     {
         "identity": ("identity",),
         "flow": ("flow",),
-        "tables": ("tables", "starts_table"),
         "independent": ("independent",),
     },
     {
         "starts": ("starts",),
+        "shape": ("shape", "strands"),
+        "tables": ("tables", "starts_table"),
         "catalog": (
             "catalog",
             "catalog_file",
@@ -46,8 +52,10 @@ FLOORS: tuple[dict[str, tuple[str, ...]], ...] = (
         "scan": ("scan",),
         "shoot": ("shoot",),
         "stability": ("stability",),
-        "crossings": ("crossings",),
+        "syzygies": ("syzygies",),
+        "symmetry of an orbit": ("find_symmetry",),
     },
+    {"classify": ("classify",)},
     {"verify": ("verify",)},
     {"complete": ("complete",)},
     {"refine": ("refine",)},
@@ -64,7 +72,10 @@ PLACE = {
 }
 
 # Listing the catalogue must not pay for a compiler: these load without any of HEAVY, however deep.
-LIGHT = ("catalog", "identity", "tables", "words", "orbit", "migrations", "records")
+LIGHT = (
+    "catalog", "identity", "tables", "words", "cycles", "artin", "turns", "braids", "symmetry",
+    "orbit", "migrations", "records",
+)  # fmt: skip
 HEAVY = ("numpy", "scipy", "numba", "llvmlite", "orbitsearch._kernels", "orbitsearch.flow")
 
 

@@ -14,7 +14,8 @@ from reference import dop853
 from orbitsearch import bodies
 from orbitsearch.orbit import Orbit, Status
 from orbitsearch.shoot import shoot
-from orbitsearch.starts import CONDITIONS, START_SETS, Reversal, period_multiple
+from orbitsearch.starts import CONDITIONS, START_SETS, period_multiple
+from orbitsearch.symmetry import Reversal
 from orbitsearch.verify import verify
 
 KIND = {condition.label: kind for kind, condition in CONDITIONS.items()}

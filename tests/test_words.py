@@ -1,6 +1,6 @@
 """Words against sympy's free groups, against motions of points, and against published words."""
 
-from itertools import pairwise, permutations, product
+from itertools import permutations, product
 
 import numpy as np
 import pytest
@@ -12,17 +12,16 @@ from sympy.combinatorics.free_groups import (  # type: ignore[import-untyped]
     free_group,
 )
 
-from orbitsearch._letters import least_rotation
+from orbitsearch.cycles import canonical_cycle, reduce_cycle
 from orbitsearch.errors import BadRequest
 from orbitsearch.words import (
-    canonical_cycle,
     canonical_word,
     contains,
     cyclically_reduce,
     free_group_word,
     invert,
-    reduce_cycle,
     reduce_word,
+    root_and_power,
 )
 
 # X. Li & S. Liao, Sci. China Phys. Mech. Astron. 60 (2017) 129511, as printed.
@@ -38,7 +37,6 @@ PUBLISHED = (
 F, a, b = free_group("a, b")
 ELEMENTS = {"a": a, "b": b, "A": a**-1, "B": b**-1}
 words = st.text("abAB", max_size=30)
-cycles = st.text("123", max_size=40)
 
 
 def element(word: str) -> FreeGroupElement:
@@ -164,6 +162,55 @@ def test_published_words_show_the_symmetry_of_their_start(word: str) -> None:
     assert conjugate(word, image(word, "baBA")[::-1])
 
 
+# --- powers and silent arcs ---------------------------------------------------------------------
+
+
+@given(words, st.integers(1, 5))
+def test_a_multiple_cover_has_the_root_of_the_motion_and_its_power(word: str, n: int) -> None:
+    root, times = root_and_power(word)
+    assert canonical_word(root) == root
+    assert canonical_word(word) == root * times
+    expected = (root, times * n) if root else ("", 1)
+    assert root_and_power(word * n) == expected
+
+
+@given(words)
+def test_a_root_is_no_power_itself(word: str) -> None:
+    root, _ = root_and_power(word)
+    parts = [root[:k] for k in range(1, len(root)) if len(root) % k == 0]
+    assert not any(element(part) ** (len(root) // len(part)) == element(root) for part in parts)
+
+
+@given(st.text("123", max_size=40), st.sampled_from([1, 2, 3]), st.booleans())
+def test_bodies_counted_on_around_take_the_silent_arc_along(
+    cycle: str, silent: int, up: bool
+) -> None:
+    crossed = [(int(k), (-1) ** (i + up)) for i, k in enumerate(cycle)]
+    moved = [(k % 3 + 1, d) for k, d in crossed]
+    assert free_group_word(moved, silent % 3 + 1) == free_group_word(crossed, silent)
+
+
+@given(st.text("123", max_size=40), st.sampled_from([1, 2, 3]))
+def test_every_silent_arc_gives_the_word_of_a_change_of_basis(cycle: str, silent: int) -> None:
+    # Each arc is a path from D > 0 to D < 0; followed by the silent one backwards it is a loop, and
+    # the three choices are three bases of one free group.  In that of arc 3, with x = arc 1 and
+    # y = arc 2, the loops of arcs 1, 2, 3 are x, y and 1.
+    crossed = [(int(k), (-1) ** i) for i, k in enumerate(cycle[: len(cycle) // 2 * 2])]
+    loop = {1: b, 2: a, 3: F.identity}
+    back = loop[silent] ** -1
+    new_a, new_b = (loop[(silent + i) % 3 + 1] * back for i in (1, 0))
+    total = F.identity
+    for letter in free_group_word(crossed, silent):
+        total = total * {"a": new_a, "b": new_b, "A": new_a**-1, "B": new_b**-1}[letter]
+    assert total == element(free_group_word(crossed))
+
+
+@pytest.mark.parametrize("silent", [0, 4])
+def test_a_silent_arc_must_be_a_body(silent: int) -> None:
+    with pytest.raises(BadRequest, match=rf"`silent` must be 1, 2 or 3, got {silent}: name"):
+        free_group_word([], silent)
+
+
 # --- motions of three points --------------------------------------------------------------------
 
 
@@ -260,84 +307,6 @@ def test_reducing_the_cycle_first_gives_the_same_word(cycle: str) -> None:
     assert word(reduce_cycle(cycle)) == word(cycle)
 
 
-# --- cycles -------------------------------------------------------------------------------------
-
-
-@given(cycles)
-def test_cycles_reduce_to_no_equal_neighbours(cycle: str) -> None:
-    reduced = reduce_cycle(cycle)
-    assert (len(cycle) - len(reduced)) % 2 == 0
-    assert len(reduced) < 2 or all(one != two for one, two in pairwise(reduced + reduced[0]))
-
-
-@given(cycles)
-def test_cycles_reduce_as_products_of_reflections(cycle: str) -> None:
-    # Z2 * Z2 * Z2 acts on the hyperbolic plane by reflections in the sides of an ideal triangle,
-    # faithfully; conjugate elements have equal traces, here in exact integers.
-    reflections = {
-        "1": np.array([[1, 0], [0, -1]], dtype=object),
-        "2": np.array([[-1, 2], [0, 1]], dtype=object),
-        "3": np.array([[1, 0], [2, -1]], dtype=object),
-    }
-
-    def trace(bodies: str) -> int:
-        total = np.array([[1, 0], [0, 1]], dtype=object)
-        for body in bodies:
-            total = total @ reflections[body]
-        return abs(int(total[0, 0] + total[1, 1]))
-
-    assert trace(reduce_cycle(cycle)) == trace(cycle)
-
-
-@given(cycles, st.integers(0, 40), st.permutations("123"), st.booleans())
-def test_canonical_cycle_folds_in_rotation_labels_and_reversal(
-    cycle: str, shift: int, labels: list[str], backwards: bool
-) -> None:
-    changed = cycle[shift:] + cycle[:shift]
-    changed = changed.translate(str.maketrans("123", "".join(labels)))
-    assert canonical_cycle(changed[::-1] if backwards else changed) == canonical_cycle(cycle)
-
-
-@given(cycles)
-def test_canonical_cycle_is_the_least_of_all_images(cycle: str) -> None:
-    reduced = reduce_cycle(cycle)
-    every = [
-        (turned[i:] + turned[:i]).translate(str.maketrans("123", "".join(order)))
-        for turned in (reduced, reduced[::-1])
-        for i in range(max(1, len(reduced)))
-        for order in permutations("123")
-    ]
-    assert canonical_cycle(cycle) == min(every)
-
-
-@given(st.text("abc", max_size=60))
-def test_least_rotation_is_the_least_of_all(text: str) -> None:
-    every = [text[i:] + text[:i] for i in range(max(1, len(text)))]
-    assert least_rotation(text) == min(every)
-
-
-class Counted(str):
-    """A string that counts how often it is indexed."""
-
-    reads = 0
-
-    def __add__(self, other: str) -> "Counted":
-        return Counted(str(self) + str(other))
-
-    def __getitem__(self, key: object) -> str:
-        Counted.reads += 1
-        return super().__getitem__(key)  # type: ignore[index]
-
-
-@pytest.mark.parametrize(
-    "text", ["1" * 5000 + "2", "12" * 3000, "2" * 4000 + "1" * 4000, "21" * 99]
-)
-def test_least_rotation_needs_linear_work(text: str) -> None:
-    Counted.reads = 0
-    least_rotation(Counted(text))
-    assert 0 < Counted.reads <= 6 * len(text)
-
-
 # --- parts and bad input ------------------------------------------------------------------------
 
 
@@ -357,18 +326,14 @@ def test_contains_finds_every_piece_of_every_image(word: str, begin: int, length
     assert contains(canonical_word(word), piece)
 
 
-@pytest.mark.parametrize("call", [reduce_word, cyclically_reduce, invert, canonical_word])
+@pytest.mark.parametrize(
+    "call", [reduce_word, cyclically_reduce, invert, canonical_word, root_and_power]
+)
 def test_a_bad_letter_is_named_with_its_place(call: object) -> None:
     with pytest.raises(
         BadRequest, match=r"`word` .* letters a, b, A, B, got 'x' at place 3: write"
     ):
         call("abx")  # type: ignore[operator]
-
-
-@pytest.mark.parametrize("call", [reduce_cycle, canonical_cycle])
-def test_a_bad_body_is_named_with_its_place(call: object) -> None:
-    with pytest.raises(BadRequest, match=r"`cycle` .* letters 1, 2, 3, got '0' at place 2: write"):
-        call("10")  # type: ignore[operator]
 
 
 @pytest.mark.parametrize(
@@ -382,13 +347,3 @@ def test_a_bad_body_is_named_with_its_place(call: object) -> None:
 def test_bad_crossings_say_which(crossed: list[tuple[int, int]], message: str) -> None:
     with pytest.raises(BadRequest, match=message):
         free_group_word(crossed)
-
-
-def test_a_long_cycle_is_still_its_own_least_form() -> None:
-    rng = np.random.default_rng(7)
-    steps = rng.integers(1, 3, size=6000)
-    cycle = "".join(str(int(k)) for k in np.cumsum(steps) % 3 + 1)
-    reduced = reduce_cycle(cycle)
-    assert len(reduced) > 5000
-    assert canonical_cycle(cycle[3000:] + cycle[:3000]) == canonical_cycle(cycle)
-    assert len(canonical_cycle(cycle)) == len(reduced)

@@ -47,6 +47,6 @@ def main(arguments: Sequence[str] | None = None) -> int:
 
 def _typed(message: str) -> str:
     """The message with arguments named as they are typed, not as Python names them."""
-    for name, option in (("path", "catalog"), ("max_scaled_period", "max-scaled-period")):
-        message = message.replace(f"`{name}`", f"`--{option}`")
-    return message
+    for name in ("word", "braid", "symmetry", "max_scaled_period"):
+        message = message.replace(f"`{name}`", f"`--{name.replace('_', '-')}`")
+    return message.replace("`path`", "`--catalog`")

@@ -13,23 +13,16 @@ from collections import Counter
 from collections.abc import Iterable, Iterator
 from contextlib import closing, contextmanager
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, TypeGuard
 
 from tqdm import tqdm
 
-from orbitsearch import tables
+from orbitsearch import period_law, tables
 from orbitsearch.catalog import Catalog
-from orbitsearch.cli.report import (
-    complain,
-    counts_text,
-    orbit_text,
-    record_text,
-    say,
-    say_json,
-    verdict_text,
-)
+from orbitsearch.cli.describe import kind_json, law_text, orbit_text, record_text, verdict_text
+from orbitsearch.cli.report import complain, counts_text, say, say_json
 from orbitsearch.errors import BadRequest, OrbitsearchError
-from orbitsearch.orbit import Orbit, Status
+from orbitsearch.orbit import Orbit, Status, Verdict
 
 if TYPE_CHECKING:
     from orbitsearch.search import SearchRequest
@@ -182,8 +175,11 @@ def verify(options: Namespace) -> int:
         found = verify_as_given(options.start, options.at[0], options.at[1], options.period)
     else:
         with Catalog.open(options.catalog, create=False) as catalog:
-            start = catalog.get(options.id).orbit.start
-        found = verify_as_given(start.kind, start.p, start.q, float(start.period))
+            filed = catalog.get(options.id).orbit
+            start = filed.start
+            found = verify_as_given(start.kind, start.p, start.q, float(start.period))
+            if filed.braid is None and not catalog.read_only and _may_be_filed(found):
+                catalog.add(found)
     if isinstance(found, Orbit):
         value, text, status = found.to_json(), orbit_text(found), found.status
     else:
@@ -202,6 +198,10 @@ def verify(options: Namespace) -> int:
     return DONE if status is Status.VERIFIED else NO
 
 
+def _may_be_filed(found: Orbit | Verdict) -> TypeGuard[Orbit]:
+    return isinstance(found, Orbit) and found.status in (Status.VERIFIED, Status.NOT_CONFIRMED)
+
+
 def list_orbits(options: Namespace) -> int:
     """List filed orbits that meet the options."""
     if options.start is not None:
@@ -214,12 +214,37 @@ def list_orbits(options: Namespace) -> int:
             stable=True if options.stable else None,
             max_scaled_period=options.max_scaled_period,
             word=options.word,
+            braid=options.braid,
+            symmetry=options.symmetry,
         )
         if options.json:
             say(tables.to_json(records))
         else:
             found = [*records]
             say(tables.to_text(found) if found else "no orbits")
+    return DONE
+
+
+def list_kinds(options: Namespace) -> int:
+    """Group the filed orbits by braid type, and hold their words against the law of periods."""
+    with Catalog.open(options.catalog, create=False) as catalog:
+        found = catalog.kinds()
+        untyped = catalog.untyped()
+        lengths = catalog.word_lengths("collinear")
+    if options.json:
+        mean, spread, count = period_law.fit((period, length) for _, period, length in lengths)
+        law = {"mean": mean, "spread": spread, "orbits": count}
+        kinds = [kind_json(kind) for kind in found]
+        say_json({"kinds": kinds, "untyped": untyped, "period_law": law})
+        return DONE
+    say(tables.kinds_to_text(found) if found else "no orbits")
+    if found:
+        say("\n" + law_text(lengths))
+    if untyped:
+        say(
+            f"\n{len(untyped)} orbits filed by an early version have no type yet:"
+            f" `orbitsearch verify {untyped[0]}` gives it one, and so does another search"
+        )
     return DONE
 
 
@@ -365,6 +390,7 @@ COMMANDS = {
     "refine": refine,
     "verify": verify,
     "list": list_orbits,
+    "kinds": list_kinds,
     "show": show,
     "export": export,
     "import": import_table,

@@ -10,6 +10,7 @@ from typing import Any, NoReturn
 from orbitsearch import __version__
 from orbitsearch.cli.commands import COMMANDS
 from orbitsearch.cli.report import complain
+from orbitsearch.symmetry import NAMES
 
 __all__ = ["make_parser"]
 
@@ -85,6 +86,17 @@ def make_parser() -> argparse.ArgumentParser:
     one.add_argument("--stable", action="store_true", help="linearly stable ones")
     one.add_argument("--max-scaled-period", type=float, metavar="S", help="with T* up to S")
     one.add_argument("--word", metavar="W", help="with this free-group word, in any form")
+    one.add_argument(
+        "--braid", metavar="B",
+        help="with this braid: its kind, a cyclic word such as (LR)^3, or an Artin word such as"
+        " '1 -2 1 -2'",
+    )  # fmt: skip
+    one.add_argument(
+        "--symmetry", metavar="NAME",
+        help=f"with this symmetry, one of {len(NAMES)} names such as choreography or mirror",
+    )  # fmt: skip
+
+    command("kinds", "Group the filed orbits by braid type.")
 
     one = command("show", "Show everything about one filed orbit.")
     one.add_argument("id", type=int, metavar="ID", help="number in the catalogue")

@@ -8,22 +8,16 @@ import os
 import sys
 from typing import Any
 
-from orbitsearch.orbit import Check, Orbit, Verdict
-from orbitsearch.records import Record
 from orbitsearch.tables import finite
 
 __all__ = [
     "any_letter",
     "complain",
     "counts_text",
-    "orbit_text",
-    "record_text",
     "say",
     "say_json",
-    "verdict_text",
 ]
 
-SHOWN_WORD = 200
 # Counts of starts that led to orbits, said in more words than their keys have.
 ORBIT_COUNTS = {
     "known": "starts known already",
@@ -57,65 +51,6 @@ def say_json(value: Any) -> None:
 def complain(text: str) -> None:
     """Write one line on standard error."""
     sys.stderr.write(f"orbitsearch: {' '.join(text.split())}\n")
-
-
-def _check_text(check: Check) -> str:
-    outcome = {True: "ok", False: "FAILS", None: "open"}[check.passed]
-    note = f"  {check.note}" if check.note else ""
-    return f"  {check.name:<20} {check.value:>10.3g}   bound {check.bound:<8.3g} {outcome}{note}"
-
-
-def verdict_text(verdict: Verdict) -> str:
-    """The verdict, one line a check."""
-    lines = [f"verdict: {verdict.status} ({verdict.reason})"]
-    return "\n".join([*lines, *map(_check_text, verdict.checks)])
-
-
-def _cut(text: str) -> str:
-    return text if len(text) <= SHOWN_WORD else f"{text[:SHOWN_WORD]}... ({len(text)})"
-
-
-def orbit_text(orbit: Orbit) -> str:
-    """Everything about an orbit in readable lines."""
-    stability = orbit.stability
-    angles = " ".join(f"{angle:.12g}" for angle in stability.angles)
-    rotation = f"turns by {orbit.rotation:.12g} rad" if orbit.rotation else "closes"
-    choreography = "no"
-    if orbit.choreography:
-        choreography = "yes, in the frame that turns with it" if orbit.rotation else "yes"
-    lines = [
-        f"start:            {orbit.start.kind} {' '.join(orbit.start.parameters)}",
-        f"period T:         {orbit.start.period}   ({rotation} in the inertial frame)",
-        f"scale-free T*:    {orbit.scaled_period:.15g}",
-        f"energy:           {orbit.energy:.15g}",
-        f"angular momentum: {orbit.angular_momentum:.3g}",
-        f"word:             {_cut(orbit.word) or '(empty)'}   length {len(orbit.word)}",
-        f"syzygy cycle:     {_cut(orbit.cycle) or '(empty)'}   length {len(orbit.cycle)}",
-        f"choreography:     {choreography}",
-        f"stability:        {stability.kind}, largest multiplier {stability.max_multiplier:.9g}"
-        + (f", angles {angles} (arg λ / 2π)" if angles else ""),
-        f"least separation: {orbit.least_separation:.6g} / |E|",
-    ]
-    lines += [
-        f"also starts from: {s.kind} {' '.join(s.parameters)}, T = {s.period}"
-        for s in orbit.starts
-        if s != orbit.start
-    ]
-    return "\n".join([*lines, verdict_text(orbit.verdict)])
-
-
-def record_text(record: Record) -> str:
-    """A catalogue record: the orbit and where it comes from."""
-    origin = f"run {record.run_id}" if record.run_id is not None else "refined from a guess"
-    lines = [
-        f"orbit {record.id}, filed {record.created} by orbitsearch {record.tool_version}, {origin}",
-        orbit_text(record.orbit),
-    ]
-    lines += [
-        f"published: {source.citation} {source.label} ({source.p}, {source.q}, T = {source.period})"
-        for source in record.sources
-    ]
-    return "\n".join([*lines, f"note: {record.note}"] if record.note else lines)
 
 
 def counts_text(counts: dict[str, int]) -> str:

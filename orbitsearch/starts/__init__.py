@@ -8,7 +8,7 @@ that needs an event the compiled scan does not look for also needs it there.)
 from __future__ import annotations
 
 from orbitsearch.errors import BadRequest
-from orbitsearch.starts.base import Condition, Reversal, StartSet
+from orbitsearch.starts.base import Condition, StartSet
 from orbitsearch.starts.collinear import Collinear
 from orbitsearch.starts.isosceles import Isosceles
 from orbitsearch.starts.perpendicular import Perpendicular
@@ -18,7 +18,6 @@ __all__ = [
     "CONDITIONS",
     "START_SETS",
     "Condition",
-    "Reversal",
     "StartSet",
     "period_multiple",
     "set_of",

@@ -11,7 +11,6 @@ solver needs to know of a set.
 
 from __future__ import annotations
 
-import math
 from abc import ABC, abstractmethod
 from dataclasses import dataclass
 from typing import ClassVar
@@ -20,56 +19,19 @@ import numpy as np
 from numpy.typing import NDArray
 
 from orbitsearch import bodies
+from orbitsearch.symmetry import REVERSALS, Reversal
 
 __all__ = [
     "Array",
     "Condition",
-    "Reversal",
     "StartSet",
     "base_sides",
     "half_base",
     "place_of",
     "product_form",
-    "swap_of_others",
 ]
 
 Array = NDArray[np.float64]
-
-
-@dataclass(frozen=True)
-class Reversal:
-    """A reversing symmetry of the equations of motion.
-
-    Attributes
-    ----------
-    permutation : tuple of int
-        Body i takes the place of body ``permutation[i]`` (numbered from 0).
-    plane : str
-        What is done to the plane: ``identity``, ``half-turn`` or ``mirror``.
-    """
-
-    permutation: tuple[int, int, int]
-    plane: str
-
-    def order_with(self, other: Reversal) -> int:
-        """Order n of the product with `other`, rotations of the plane by any angle left aside.
-
-        Two mirrors make a rotation, by twice the angle between their axes: relative periodic
-        orbits are periodic in the frame that turns with them.  A half-turn and the identity make a
-        half-turn, which closes in the inertial frame after twice the time.
-
-        Examples
-        --------
-        >>> middle3 = Reversal((1, 0, 2), "half-turn")
-        >>> middle1 = Reversal((0, 2, 1), "half-turn")
-        >>> apex1 = Reversal((0, 2, 1), "mirror")
-        >>> [middle3.order_with(end) for end in (middle3, middle1, apex1)]
-        [1, 3, 6]
-        """
-        product = tuple(other.permutation[i] for i in self.permutation)
-        fixed = sum(i == image for i, image in enumerate(product))
-        plane = 1 if self.plane == other.plane else 2
-        return math.lcm({3: 1, 1: 2, 0: 3}[fixed], plane)
 
 
 @dataclass(frozen=True, eq=False)
@@ -86,7 +48,6 @@ class Condition:
         Event function at whose roots it is looked for, as numbered in `orbitsearch.flow.Events`.
     body : int
         The special body 1..3, or 0 when there is none.
-    reversal : Reversal
     forms : ndarray, shape (3, 12, 12)
         Symmetric matrices Q; a state x is in the set when x·Q x / 2 vanishes for all three.
     degrees : ndarray, shape (3,)
@@ -98,9 +59,13 @@ class Condition:
     kind: int
     event: int
     body: int
-    reversal: Reversal
     forms: Array
     degrees: Array
+
+    @property
+    def reversal(self) -> Reversal:
+        """The reversing symmetry that fixes states which fulfil the condition."""
+        return REVERSALS[self.label]
 
     @property
     def aligned(self) -> bool:
@@ -192,11 +157,6 @@ def base_sides(body: int) -> tuple[int, int, int]:
     """Indices in (A, B, C) of the side opposite to a body and of the two sides that follow it."""
     base = body % 3
     return base, (base + 1) % 3, (base + 2) % 3
-
-
-def swap_of_others(body: int) -> tuple[int, int, int]:
-    """Permutation (numbered from 0) that exchanges the two bodies other than `body`."""
-    return {1: (0, 2, 1), 2: (2, 1, 0), 3: (1, 0, 2)}[body]
 
 
 def place_of(body: int) -> dict[int, float]:

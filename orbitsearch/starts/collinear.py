@@ -14,13 +14,11 @@ from orbitsearch import bodies
 from orbitsearch.starts.base import (
     Array,
     Condition,
-    Reversal,
     StartSet,
     base_sides,
     half_base,
     place_of,
     product_form,
-    swap_of_others,
 )
 
 __all__ = ["Collinear"]
@@ -34,7 +32,6 @@ def _condition(body: int) -> Condition:
         kind=body,
         event=0,
         body=body,
-        reversal=Reversal(swap_of_others(body), "half-turn"),
         forms=np.array(
             [
                 product_form(middle, outer),

@@ -15,13 +15,11 @@ from orbitsearch import bodies
 from orbitsearch.starts.base import (
     Array,
     Condition,
-    Reversal,
     StartSet,
     base_sides,
     half_base,
     place_of,
     product_form,
-    swap_of_others,
 )
 
 __all__ = ["Isosceles"]
@@ -37,7 +35,6 @@ def _condition(body: int) -> Condition:
         kind=3 + body,
         event=body,
         body=body,
-        reversal=Reversal(swap_of_others(body), "mirror"),
         forms=np.array(
             [
                 product_form({after: 1.0}, {after: 1.0})

@@ -12,7 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from orbitsearch import bodies
-from orbitsearch.starts.base import Array, Condition, Reversal, StartSet, half_base, product_form
+from orbitsearch.starts.base import Array, Condition, StartSet, half_base, product_form
 
 __all__ = ["Perpendicular"]
 
@@ -23,7 +23,6 @@ _CONDITION = Condition(
     kind=8,
     event=0,
     body=0,
-    reversal=Reversal((0, 1, 2), "mirror"),
     forms=np.array(
         [
             product_form(_A, _B, cross=True),

@@ -10,7 +10,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
-from orbitsearch.starts.base import Array, Condition, Reversal, StartSet, product_form
+from orbitsearch.starts.base import Array, Condition, StartSet, product_form
 
 __all__ = ["Rest"]
 
@@ -26,7 +26,6 @@ _CONDITION = Condition(
     kind=7,
     event=4,
     body=0,
-    reversal=Reversal((0, 1, 2), "identity"),
     forms=np.array(
         [
             product_form(_RHO, _RHO, rate=True) - product_form(_LAMBDA, _LAMBDA, rate=True),

@@ -8,7 +8,7 @@ import numpy as np
 from tabulate import tabulate
 
 from orbitsearch import __version__
-from tests.bench import integrator, searching
+from tests.bench import integrator, searching, typing_words
 from tests.bench.measure import measure
 
 # Name on the command line: function that builds its tables.  A new subject is a file beside
@@ -16,6 +16,7 @@ from tests.bench.measure import measure
 GROUPS = {
     "integrator": integrator.sections,
     "searching": searching.sections,
+    "words": typing_words.sections,
 }
 
 
