@@ -22,8 +22,8 @@ Rotations, the six relabellings, reversal and the mirror image change the name o
 from functools import cache
 from itertools import permutations, product
 
+from orbitsearch._crossings import arcs_heard
 from orbitsearch._letters import (
-    arcs_heard,
     cancel,
     check_letters,
     least_image,

@@ -16,10 +16,10 @@ import re
 from collections.abc import Iterable
 from itertools import permutations
 
+from orbitsearch._crossings import crossing_letters
 from orbitsearch._letters import (
     cancel,
     check_letters,
-    crossing_letters,
     least_image,
     primitive_root,
     strip_ends,

@@ -32,11 +32,10 @@ silent arc, and `orbitsearch.cycles.cycle_of_word` finds it whatever arc an auth
 
 from collections.abc import Iterable, Iterator
 
+from orbitsearch._crossings import arcs_heard, crossing_letters
 from orbitsearch._letters import (
-    arcs_heard,
     cancel,
     check_letters,
-    crossing_letters,
     least_image,
     primitive_root,
     strip_ends,

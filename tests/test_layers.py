@@ -20,7 +20,7 @@ ROOT = Path(orbitsearch.__file__).parent
 FLOORS: tuple[dict[str, tuple[str, ...]], ...] = (
     {"errors": ("errors",), "kernels": ("_kernels",)},
     {
-        "words": ("words", "cycles", "artin", "turns", "braids", "_letters"),
+        "words": ("words", "cycles", "artin", "turns", "braids", "_crossings", "_letters"),
         "symmetry": ("symmetry",),
         "period law": ("period_law",),
         "workers": ("workers",),
