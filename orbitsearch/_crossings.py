@@ -1,4 +1,4 @@
-"""Crossings of the equator of the shape sphere, as pairs of numbers, and the letters they become."""
+"""Crossings of the equator of the shape sphere: pairs of numbers, and letters for them."""
 
 from collections.abc import Iterable
 

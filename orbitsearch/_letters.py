@@ -1,7 +1,8 @@
 """Strings read around a circle: cancelling, trimming, roots and least rotations.
 
-Words, cycles and braids share this, and the check of the letters that come in.  Syzygy sequences run to thousands of letters, so nothing here looks at all
-rotations; and searches name thousands of motions, so the inner loops are those of `str`.
+Words, cycles and braids share this, and the check of the letters that come in.  Syzygy sequences
+run to thousands of letters, so nothing here looks at all rotations; and searches name thousands of
+motions, so the inner loops are those of `str`.
 """
 
 from collections.abc import Callable, Iterable
