@@ -16,11 +16,15 @@ __all__ = [
     "least_image",
     "least_rotation",
     "primitive_root",
+    "shown",
     "strip_ends",
 ]
 
 _GLANCE = 12
 """Letters by which `least_image` tells beginnings apart before it compares whole strings."""
+
+_SHOWN = 40
+"""Letters of a text that a message repeats."""
 
 _FEW = 32
 """So many whole rotations are compared as they stand; more would no longer be linear work."""
@@ -194,6 +198,17 @@ def _places(part: str, text: str) -> list[int]:
     return found
 
 
+def shown(text: str) -> str:
+    """A text for a message: in quotes, and cut short when it is long.
+
+    Examples
+    --------
+    >>> shown("LRX"), shown("L" * 100)
+    ("'LRX'", "'LLLLLLLLLLLLLLLLLLLLLLLLLLLLLLLLLLLLLLLL...'")
+    """
+    return repr(text if len(text) <= _SHOWN else f"{text[:_SHOWN]}...")
+
+
 def check_letters(text: str, alphabet: str, name: str, advice: str) -> None:
     """Refuse a text at its first character that is no letter of the alphabet.
 
@@ -211,6 +226,8 @@ def check_letters(text: str, alphabet: str, name: str, advice: str) -> None:
     BadRequest
         Naming the character and its place, counted from 1.
     """
+    if not isinstance(text, str):
+        raise BadRequest(f"`{name}` must be a string, got {text!r}: {advice}")
     if set(text).issubset(alphabet):
         return
     place, letter = next((i, c) for i, c in enumerate(text, start=1) if c not in alphabet)

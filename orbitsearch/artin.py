@@ -18,6 +18,7 @@ W. Magnus, A. Karrass & D. Solitar, Combinatorial Group Theory).
 
 from collections.abc import Iterable
 
+from orbitsearch._letters import shown
 from orbitsearch.errors import BadRequest
 
 __all__ = ["exponent_of_artin", "matrix", "read_artin", "same_braid", "turns_of_artin"]
@@ -186,10 +187,11 @@ def read_artin(text: str, name: str = "text") -> list[int]:
     letters = []
     for place, part in enumerate(text.split(), start=1):
         try:
-            letters.append(int(part))
+            # Longer numbers are no generators either, and Python reads only some of them.
+            letters.append(int(part[:9]))
         except ValueError:
             raise BadRequest(
-                f"`{name}` must be whole numbers with blanks between, got {part!r} at place "
+                f"`{name}` must be whole numbers with blanks between, got {shown(part)} at place "
                 f"{place}: write an Artin word as 1 -2 1 -2"
             ) from None
     return _checked(letters, name)
@@ -199,7 +201,8 @@ def _checked(letters: Iterable[int], name: str = "letters") -> list[int]:
     """Letters of a word, all of them generators of the group on three strands or inverses."""
     word = list(letters)
     for place, letter in enumerate(word, start=1):
-        if letter not in _MATRICES:
+        # True and 1.0 are equal to 1, and yet no letters.
+        if type(letter) is not int or letter not in _MATRICES:
             raise BadRequest(
                 f"`{name}` must be 1, -1, 2 or -2 for three strands, got {letter!r} at place "
                 f"{place}: write i for sigma_i and -i for its inverse, no other number of strands "

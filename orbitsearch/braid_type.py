@@ -3,11 +3,17 @@
 The world lines of the three bodies over a period are a pure braid.  Its conjugacy class does not
 depend on the moment the period begins at, nor on the labels; running backwards inverts it, and the
 mirror image mirrors it.  So that one of those four classes which comes first in a fixed order is
-the same for every description of one orbit.  Where a permutation of the bodies takes part of the
-period to the next part, the braid of that part is a root of the whole.
+the same for every description of one orbit.
 
-For an orbit that closes only up to a rotation the world lines are taken in the frame that turns
-evenly by that rotation in a period, hence closes them.
+An orbit that closes only up to a rotation closes in a frame that turns evenly.  That frame is known
+up to whole turns a period: it is the one in which bodies share a curve, where they do in any, and
+else the one that turns by less than half a turn a period.  Backwards and in the mirror the frame
+turns the other way; the braid is that of the description in which the angle of less than half a
+turn is counterclockwise, which leaves two classes to choose from.
+
+Where a permutation of the bodies takes part of the period to the next part, the braid of the period
+is a power of that of the part.  In an orbit that closes, the part may be turned: then it is taken
+in the frame that undoes this, and its power is the braid of the period less that frame's twists.
 """
 
 from __future__ import annotations
@@ -20,7 +26,12 @@ from orbitsearch.braids import Braid
 from orbitsearch.symmetry import Symmetry
 from orbitsearch.turns import windings_from_crossings
 
-__all__ = ["BraidType"]
+__all__ = ["BraidType", "whole_number"]
+
+_LONGEST_NUMBER = 4000
+"""Digits of a number in JSON; Python writes and reads 4300, others fewer."""
+
+Windings = tuple[int, int, int]
 
 
 @dataclass(frozen=True)
@@ -31,7 +42,7 @@ class BraidType:
     ----------
     braid : Braid
         The class of the period, its inverse, its mirror image or both, whichever comes first
-        (`Braid.canonical`).
+        (`Braid.canonical`), among those that turn counterclockwise.
     windings : tuple of int
         How often each pair winds round, counterclockwise, in falling order.
     part : int
@@ -46,7 +57,13 @@ class BraidType:
     part_braid: Braid
 
     @classmethod
-    def of(cls, crossings: Sequence[tuple[int, int]], total: int, symmetry: Symmetry) -> BraidType:
+    def of(
+        cls,
+        crossings: Sequence[tuple[int, int]],
+        total: int,
+        symmetry: Symmetry,
+        rotation: float = 0.0,
+    ) -> BraidType:
         """Type of a closed motion.
 
         Parameters
@@ -54,26 +71,37 @@ class BraidType:
         crossings : sequence of (int, int)
             Body in the middle and direction, as for `orbitsearch.words.free_group_word`.
         total : int
-            Sum of the windings of the three pairs, counterclockwise.
+            Sum of the windings of the three pairs, counterclockwise, in the frame that turns by
+            `rotation` in a period.
         symmetry : Symmetry
             Its group.
+        rotation : float
+            Angle in (-π, π] by which the motion has turned after a period.
 
         Raises
         ------
         BadRequest
             When the crossings do not alternate, or total and symmetry do not fit them.
         """
-        braid = Braid.from_crossings(crossings, 2 * total)
+        # Each turn of the frame takes a full twist out of the braid: a turn out of each winding.
+        inside = Braid.from_crossings(crossings, 2 * total - 6 * symmetry.frame_turns)
+        part = inside.root(symmetry.part)
+        if rotation:
+            total -= 3 * symmetry.frame_turns
+        braid = Braid(inside.cycle, 2 * total)
         windings = windings_from_crossings(crossings, total)
-        # In a frame that makes those turns, the part is closed up to the permutation.
-        seen = Braid(braid.cycle, braid.exponent_sum - 6 * symmetry.frame_turns)
-        part_braid = (seen if symmetry.part > 1 else braid).root(symmetry.part)
-        canonical = braid.canonical()
+        if rotation < 0:
+            braid, part, windings = braid.mirror(), part.mirror(), _negative(windings)
+        canonical = braid.canonical(keep_sense=rotation != 0)
+        if not rotation:
+            signed = (windings, _negative(windings))
+            fitting = (w for w in signed if 2 * sum(w) == canonical.exponent_sum)
+            windings = max(fitting, key=_falling)
         return cls(
             braid=canonical,
-            windings=_canonical_windings(windings, canonical.exponent_sum),
+            windings=_falling(windings),
             part=symmetry.part,
-            part_braid=part_braid.canonical(),
+            part_braid=part.canonical(keep_sense=rotation != 0),
         )
 
     def to_json(self) -> dict[str, Any]:
@@ -94,21 +122,27 @@ class BraidType:
         )
 
 
-def _canonical_windings(windings: tuple[int, int, int], exponent_sum: int) -> tuple[int, int, int]:
-    """Windings in falling order, signed like the canonical braid, whose exponent sum is given."""
-    # The mirror image and the reversed motion wind the other way.
-    first, second, third = max(
-        tuple(sorted((sign * w for w in windings), reverse=True))
-        for sign in (1, -1)
-        if 2 * sign * sum(windings) == exponent_sum
-    )
+def _negative(windings: Windings) -> Windings:
+    """What the mirror image has, or the motion run backwards."""
+    first, second, third = windings
+    return -first, -second, -third
+
+
+def _falling(windings: Windings) -> Windings:
+    first, second, third = sorted(windings, reverse=True)
     return first, second, third
+
+
+def whole_number(braid: Braid) -> int | str:
+    """The trace for JSON: its digits as text where `json` would refuse to write the number."""
+    digits = braid.trace_text
+    return braid.trace if len(digits) <= _LONGEST_NUMBER else digits
 
 
 def _braid_json(braid: Braid) -> dict[str, Any]:
     return {
         "kind": braid.kind,
-        "trace": braid.trace,
+        "trace": whole_number(braid),
         "dilatation": braid.dilatation,
         "dilatation_exact": braid.dilatation_text,
         "entropy": braid.entropy,

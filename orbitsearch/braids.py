@@ -22,27 +22,22 @@ none does, as for bodies that turn rigidly.
 
 import math
 import operator
-import re
 from collections.abc import Iterable
 from dataclasses import dataclass
-from decimal import Decimal
-from typing import NamedTuple
 
 from orbitsearch._letters import check_letters, least_image, primitive_root
-from orbitsearch.artin import exponent_of_artin, read_artin, turns_of_artin
+from orbitsearch._surds import digits, eigenvalue_text
+from orbitsearch.artin import exponent_of_artin, turns_of_artin
 from orbitsearch.errors import BadRequest
-from orbitsearch.turns import exponent_of_turns, read_cycle, trace_of_turns, turns_from_crossings
+from orbitsearch.turns import exponent_of_turns, trace_of_turns, turns_from_crossings
 
-__all__ = ["KINDS", "Braid", "Pattern", "read_braid"]
+__all__ = ["KINDS", "Braid"]
 
 KINDS = ("periodic", "reducible", "pseudo-Anosov")
 """The three kinds of braids, in Thurston's words."""
 
 _SWAP = str.maketrans("LR", "RL")
 _TURNS = {"R": 1, "L": -2}
-
-_LARGEST_TO_FACTOR = 10**8
-"""Traces up to this are searched for square factors, in at most 10^4 divisions."""
 
 
 @dataclass(frozen=True)
@@ -183,7 +178,7 @@ class Braid:
         >>> Braid("LRLRLR", 0).trace_text, len(Braid("LR" * 20000, 0).trace_text)
         ('18', 8360)
         """
-        return _digits(self.trace)
+        return digits(self.trace)
 
     @property
     def entropy(self) -> float:
@@ -227,7 +222,7 @@ class Braid:
         if self.kind != "pseudo-Anosov":
             return "1"
         root, n = primitive_root(self.cycle)
-        text = _eigenvalue_text(trace_of_turns(root))
+        text = eigenvalue_text(trace_of_turns(root))
         return text if n == 1 else f"({text})^{n}"
 
     @property
@@ -268,10 +263,12 @@ class Braid:
         """Class of the mirror image."""
         return Braid(self.cycle.translate(_SWAP), -self.exponent_sum)
 
-    def canonical(self) -> "Braid":
+    def canonical(self, *, keep_sense: bool = False) -> "Braid":
         """First of the class, its inverse, its mirror image, and the inverse of that.
 
-        The cycle decides, least in alphabetical order; then the exponent sum, the larger one first,
+        With `keep_sense` only of the class and the inverse of its mirror image, which wind the same
+        way: a motion and what is seen of it in the mirror while it runs backwards.  The cycle
+        decides, least in alphabetical order; then the exponent sum, the larger one first,
         so that bodies that turn rigidly do so counterclockwise.
 
         Examples
@@ -279,6 +276,8 @@ class Braid:
         >>> Braid("", -6).canonical(), Braid("RRL", 1).canonical()
         (Braid(cycle='', exponent_sum=6), Braid(cycle='LLR', exponent_sum=-1))
         """
+        if keep_sense:
+            return Braid(least_image([self.cycle, self.cycle[::-1]], "LR"), self.exponent_sum)
         kept, turned = self.cycle, self.cycle.translate(_SWAP)
         # Ordered by the negative of the sum, the larger one is first.
         cycle, negative = min(
@@ -355,94 +354,3 @@ class Braid:
             return part % 6 not in (1, 5)
         root, repeats = primitive_root(self.cycle)
         return repeats % n == 0 and (part - exponent_of_turns(root * (repeats // n))) % 6 == 0
-
-
-class Pattern(NamedTuple):
-    """What `read_braid` looks for: None where anything will do.
-
-    Cycle and exponent sum are those of `Braid.canonical`.
-    """
-
-    kind: str | None = None
-    cycle: str | None = None
-    exponent_sum: int | None = None
-
-    def fits(self, braid: Braid) -> bool:
-        """Whether a braid, its inverse or its mirror image is what is looked for."""
-        found = braid.canonical()
-        return (
-            self.kind in (None, found.kind)
-            and self.cycle in (None, found.cycle)
-            and self.exponent_sum in (None, found.exponent_sum)
-        )
-
-
-def read_braid(braid: str) -> Pattern:
-    """What to look for, from a kind, a cycle or an Artin word.
-
-    Parameters
-    ----------
-    braid : str
-        One of `KINDS` in capitals or not, or what `orbitsearch.turns.read_cycle` or
-        `orbitsearch.artin.read_artin` takes.
-
-    Returns
-    -------
-    Pattern
-        A cycle leaves the exponent sum open, and thereby the number of full twists.
-
-    Raises
-    ------
-    BadRequest
-        When the text is none of them.
-
-    Examples
-    --------
-    >>> read_braid("pseudo-anosov"), read_braid("(LR)^3").cycle, read_braid("1 1").exponent_sum
-    (Pattern(kind='pseudo-Anosov', cycle=None, exponent_sum=None), 'LRLRLR', -2)
-    """
-    for kind in KINDS:
-        if braid.strip().lower() == kind.lower():
-            return Pattern(kind=kind)
-    if re.fullmatch(r"\s*[+-]?\d+(\s+[+-]?\d+)*\s*", braid):
-        wanted = Braid.from_artin(read_artin(braid, "braid")).canonical()
-        return Pattern(cycle=wanted.cycle, exponent_sum=wanted.exponent_sum)
-    if re.fullmatch(r"[LR()^\d\s]*[LR()][LR()^\d\s]*", braid):
-        cycle = read_cycle(braid, "braid")
-        return Pattern(cycle=Braid(cycle, exponent_of_turns(cycle)).canonical().cycle)
-    raise BadRequest(
-        f"`braid` must be a kind ({', '.join(KINDS)}), a cyclic word in L and R, or an Artin word, "
-        f"got {braid!r}: write for instance periodic, (LR)^3 or '1 -2 1 -2'"
-    )
-
-
-def _eigenvalue_text(trace: int) -> str:
-    """Larger eigenvalue (t + √(t² - 4))/2 of a matrix with determinant 1 and trace t > 2."""
-    if trace > _LARGEST_TO_FACTOR:
-        digits = _digits(trace)
-        return f"({digits} + √({digits}^2 - 4))/2"
-    (one, below), (two, above) = _square_part(trace - 2), _square_part(trace + 2)
-    shared = math.gcd(below, above)
-    factor, under = one * two * shared, (below // shared) * (above // shared)
-    halves = trace % 2
-    if not halves:
-        trace, factor = trace // 2, factor // 2
-    text = f"{trace} + {'' if factor == 1 else factor}√{under}"
-    return f"({text})/2" if halves else text
-
-
-def _square_part(number: int) -> tuple[int, int]:
-    """Largest factor whose square divides a number, and what is left of the number then."""
-    factor, by = 1, 2
-    while by * by <= number:
-        while number % (by * by) == 0:
-            number //= by * by
-            factor *= by
-        by += 1
-    return factor, number
-
-
-def _digits(number: int) -> str:
-    """All digits of an integer."""
-    # Decimal writes integers of any length; str stops at 4300 digits.
-    return f"{Decimal(number):f}"

@@ -95,8 +95,7 @@ class Catalog(Provenance):
             else:
                 fresh = new_starts(all_starts(orbit), kept.orbit.starts)
                 insert_starts(connection, kept.id, fresh)
-                if kept.orbit.braid is None and orbit.braid is not None:
-                    fill_in_kind(connection, kept, orbit)
+                fill_in_kind(connection, kept, orbit)
             return Added(kept.id, False)
 
     def find_same(self, orbit: Orbit) -> int | None:
@@ -220,7 +219,7 @@ class Catalog(Provenance):
         return [id for (id,) in rows]
 
     def word_lengths(self, kind: str) -> list[tuple[int, float, int]]:
-        """Number, T* and length of the word of every orbit with a start in one set.
+        """Number, T* and length of the word of every verified orbit with a start in one set.
 
         Parameters
         ----------
@@ -230,8 +229,9 @@ class Catalog(Provenance):
         with self._reading() as connection:
             return connection.execute(
                 "SELECT id, scaled_period, word_length FROM orbits "
-                "WHERE id IN (SELECT orbit_id FROM starts WHERE kind = ?) ORDER BY id",
-                (kind,),
+                "WHERE id IN (SELECT orbit_id FROM starts WHERE kind = ?) AND status = ? "
+                "ORDER BY id",
+                (kind, str(Status.VERIFIED)),
             ).fetchall()
 
     def get(self, id: int) -> Record:

@@ -8,12 +8,14 @@ import json
 from dataclasses import replace
 from typing import Any
 
-from orbitsearch.braids import Braid, read_braid
+from orbitsearch.braid_pattern import read_braid
+from orbitsearch.braids import Braid
 from orbitsearch.cycles import cycle_of_word
 from orbitsearch.errors import BadCatalog, BadRequest
 from orbitsearch.orbit import Orbit, Start, Status
 from orbitsearch.records import Kind, Record, Source
 from orbitsearch.symmetry import check_name
+from orbitsearch.turns import exponent_of_turns
 
 __all__ = ["KINDS", "PAGE", "RECORD_BY_ID", "kind_of_row", "page_query", "record_of_row"]
 
@@ -144,6 +146,8 @@ def _braid_columns(text: str | None) -> list[tuple[str, str | int]]:
     if text is None:
         return []
     wanted = read_braid(text)
+    if wanted.cycle is not None:
+        _refuse_exchanges(wanted.cycle, wanted.exponent_sum)
     asked = {
         "braid_kind =": wanted.kind,
         "braid_cycle =": wanted.cycle,
@@ -152,9 +156,21 @@ def _braid_columns(text: str | None) -> list[tuple[str, str | int]]:
     return [(column, value) for column, value in asked.items() if value is not None]
 
 
+def _refuse_exchanges(cycle: str, exponent_sum: int | None) -> None:
+    """Tell that no whole period has a braid whose strands do not return."""
+    if exponent_sum is None:
+        exponent_sum = exponent_of_turns(cycle)
+    places = Braid(cycle, exponent_sum).permutation
+    if max(places) > 1:
+        raise BadRequest(
+            "`braid` must return each body to its place over a period, and this one exchanges "
+            f"{max(places)}: ask for its power {max(places)}"
+        )
+
+
 def _symmetry_columns(name: str | None) -> list[tuple[str, str]]:
     """What a wanted symmetry asks of the columns of `kinds`."""
-    return [] if name is None else [("symmetry LIKE", f"% {check_name(name)} %")]
+    return [] if name is None else [("symmetry LIKE", f"% {check_name(name.lower())} %")]
 
 
 def _known_status(status: Status | str) -> str:

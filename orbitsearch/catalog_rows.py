@@ -22,6 +22,7 @@ __all__ = [
     "fill_in_kind",
     "insert_orbit",
     "insert_starts",
+    "lacks_kind",
     "merge_records",
     "now",
     "replace_orbit",
@@ -117,16 +118,33 @@ def replace_orbit(
     _insert_kind(connection, old.id, orbit)
 
 
+def lacks_kind(orbit: Orbit) -> bool:
+    """Whether a record of version 1 left open what kind of orbit it is, or how certainly.
+
+    Parameters
+    ----------
+    orbit : Orbit
+
+    Returns
+    -------
+    bool
+    """
+    return None in (orbit.braid, orbit.symmetry, orbit.margins)
+
+
 def fill_in_kind(connection: sqlite3.Connection, old: Record, orbit: Orbit) -> None:
-    """Give a record of version 1 the type that it lacks, and change nothing else of it.
+    """Give a record the type that it lacks, and change nothing else of it.
 
     Parameters
     ----------
     connection : sqlite3.Connection
     old : Record
+        Nothing happens when it lacks nothing.
     orbit : Orbit
-        The same orbit with its type.
+        The same orbit; nothing happens when it knows no more.
     """
+    if not lacks_kind(old.orbit) or orbit.braid is None:
+        return
     filled = replace(
         old.orbit,
         cycle=orbit.cycle,
@@ -145,8 +163,8 @@ def fill_in_kind(connection: sqlite3.Connection, old: Record, orbit: Orbit) -> N
 def merge_records(connection: sqlite3.Connection, kept: Record, other: Record) -> None:
     """Fuse a record with an older one of the same orbit, and let its number lead there.
 
-    Starts, published rows and notes go over.  The numbers of the kept record stay, since period
-    and energy belong to its own start.
+    Starts, published rows and notes go over, and so does all of a verified orbit when the kept one
+    was not confirmed, and what was known of its type when the kept one lacked it.
 
     Parameters
     ----------
@@ -154,7 +172,11 @@ def merge_records(connection: sqlite3.Connection, kept: Record, other: Record) -
     kept, other : Record
         `other` is gone afterwards.
     """
-    insert_starts(connection, kept.id, new_starts(other.orbit.starts, kept.orbit.starts))
+    if kept.orbit.status == Status.NOT_CONFIRMED and other.orbit.status == Status.VERIFIED:
+        replace_orbit(connection, kept, other.orbit, other.run_id)
+    else:
+        fill_in_kind(connection, kept, other.orbit)
+        insert_starts(connection, kept.id, new_starts(other.orbit.starts, kept.orbit.starts))
     connection.execute("UPDATE sources SET orbit_id = ? WHERE orbit_id = ?", (kept.id, other.id))
     connection.execute("UPDATE merged SET orbit_id = ? WHERE orbit_id = ?", (kept.id, other.id))
     origin = "" if other.run_id is None else f", found by run {other.run_id}"
@@ -252,11 +274,13 @@ def _insert_kind(connection: sqlite3.Connection, id: int, orbit: Orbit) -> None:
     connection.execute("DELETE FROM kinds WHERE orbit_id = ?", (id,))
     if orbit.braid is None or orbit.symmetry is None:
         return
+    # Types are looked up and grouped whichever way they turn.
+    braid = orbit.braid.braid.canonical()
     values = {
         "orbit_id": id,
-        "braid_kind": orbit.braid.braid.kind,
-        "braid_cycle": orbit.braid.braid.cycle,
-        "exponent_sum": orbit.braid.braid.exponent_sum,
+        "braid_kind": braid.kind,
+        "braid_cycle": braid.cycle,
+        "exponent_sum": braid.exponent_sum,
         # Blanks around each, so that "mirror" does not find "mirror-exchange".
         "symmetry": f" {' '.join(orbit.symmetry.names)} ",
     }

@@ -80,7 +80,7 @@ def classify(own: Condition, half: Trajectory, rotation: float) -> Classificatio
     measured = _windings(own, half, rotation)
     rounded = np.round(measured)
     error = float(np.abs(measured - rounded).max())
-    braid = _braid(crossed, rounded.astype(int), symmetry)
+    braid = _braid(crossed, rounded.astype(int), symmetry, rotation)
     return Classification(
         syzygies=syzygies,
         cycle=canonical_cycle(syzygies),
@@ -93,14 +93,17 @@ def classify(own: Condition, half: Trajectory, rotation: float) -> Classificatio
 
 
 def _braid(
-    crossed: list[tuple[int, int]], windings: NDArray[np.int64], symmetry: Symmetry
+    crossed: list[tuple[int, int]],
+    windings: NDArray[np.int64],
+    symmetry: Symmetry,
+    rotation: float,
 ) -> BraidType | None:
     """Braid type, or None where windings, alignments and symmetry contradict each other."""
     total = int(windings.sum())
     try:
         if windings_from_crossings(crossed, total) != tuple(windings):
             return None
-        return BraidType.of(crossed, total, symmetry)
+        return BraidType.of(crossed, total, symmetry, rotation)
     except BadRequest:
         return None
 

@@ -13,6 +13,7 @@ from typing import Any
 from orbitsearch import symmetry
 from orbitsearch.braid_type import BraidType
 from orbitsearch.cycles import canonical_cycle, shortest_word, word_of_cycle
+from orbitsearch.errors import BadRequest
 
 __all__ = ["APPLICATION_ID", "STEPS", "migrate", "read_version"]
 
@@ -113,6 +114,9 @@ def step_2(connection: sqlite3.Connection) -> None:
     nobody counted how often the bodies wind round each other.  It is filled in when the orbit is
     verified or found again.
 
+    What a type is, is computed by the code of today, not frozen here: a later step that changes it
+    has to compute it for all records anyway.
+
     Parameters
     ----------
     connection : sqlite3.Connection
@@ -139,16 +143,23 @@ def step_2(connection: sqlite3.Connection) -> None:
         "DROP INDEX orbits_by_word",
     ):
         connection.execute(statement)
-    rows = connection.execute("SELECT id, start, record FROM orbits").fetchall()
-    for id, start, text in rows:
-        record = json.loads(text)
-        changed = _typed(start, record)
+    # Numbers first: a cursor over rows that are being changed would promise nothing.
+    for (id,) in connection.execute("SELECT id FROM orbits").fetchall():
+        start, text = connection.execute(
+            "SELECT start, record FROM orbits WHERE id = ?", (id,)
+        ).fetchone()
+        try:
+            record = _typed(start, json.loads(text))
+        except (ValueError, KeyError, TypeError, AttributeError, BadRequest):
+            # A damaged record must not lock up all others.  It stays as it is, without a type, and
+            # whoever reads it is told its number.
+            continue
         connection.execute(
             "UPDATE orbits SET word = ?, word_length = ?, record = ? WHERE id = ?",
-            (changed["word"], len(changed["word"]), json.dumps(changed, separators=(",", ":")), id),
+            (record["word"], len(record["word"]), json.dumps(record, separators=(",", ":")), id),
         )
-        if changed["braid"] is not None:
-            braid, names = changed["braid"], changed["symmetry"]["names"]
+        if record["braid"] is not None:
+            braid, names = record["braid"], record["symmetry"]["names"]
             connection.execute(
                 "INSERT INTO kinds VALUES (?, ?, ?, ?, ?)",
                 (id, braid["kind"], braid["cycle"], braid["exponent_sum"], f" {' '.join(names)} "),

@@ -265,7 +265,13 @@ class Orbit:
 
     @property
     def law_residual(self) -> float | None:
-        """`period_per_letter` less the published mean (`orbitsearch.period_law`)."""
+        """`period_per_letter` less the published mean, None without a collinear start.
+
+        The law (`orbitsearch.period_law`) is about words in which the arc of the body midway at
+        such a start is silent.
+        """
+        if all(start.kind != "collinear" for start in (self.start, *self.starts)):
+            return None
         return period_law.residual(self.scaled_period, len(self.word))
 
     def with_starts(self, starts: tuple[Start, ...]) -> Orbit:

@@ -11,8 +11,9 @@ from __future__ import annotations
 
 import statistics
 from collections.abc import Iterable
+from dataclasses import dataclass
 
-__all__ = ["MEAN", "SPREAD", "fit", "period_per_letter", "residual"]
+__all__ = ["MEAN", "SPREAD", "Summary", "period_per_letter", "residual", "summary"]
 
 MEAN = 2.433
 """Published mean of T*/L_f."""
@@ -38,21 +39,47 @@ def residual(scaled_period: float, length: int) -> float | None:
     return None if ratio is None else ratio - MEAN
 
 
-def fit(orbits: Iterable[tuple[float, int]]) -> tuple[float, float, int]:
-    """Mean and standard deviation of T*/L_f over orbits of one's own, and their number.
+@dataclass(frozen=True)
+class Summary:
+    """How orbits keep to the law.
+
+    Attributes
+    ----------
+    median : float
+        Of T*/L_f; NaN when there are none.
+    inside : int
+        How many lie within `SPREAD` of `MEAN`.
+    count : int
+        How many have a word.
+    farthest : int or None
+        Number of the orbit whose T*/L_f is farthest from `MEAN`.
+    """
+
+    median: float
+    inside: int
+    count: int
+    farthest: int | None
+
+
+def summary(orbits: Iterable[tuple[int, float, int]]) -> Summary:
+    """How orbits of one's own keep to the law.
 
     Parameters
     ----------
-    orbits : iterable of (float, int)
-        T* and the length of the word; empty words are left out.
+    orbits : iterable of (int, float, int)
+        Number, T* and length of the word of each; empty words are left out.
 
     Returns
     -------
-    mean, spread : float
-        NaN where there are too few orbits: one for the mean, two for the spread.
-    count : int
+    Summary
+        With the median and not the mean: one short word would spoil that.
     """
-    ratios = [t / length for t, length in orbits if length]
-    mean = statistics.fmean(ratios) if ratios else float("nan")
-    spread = statistics.stdev(ratios) if len(ratios) > 1 else float("nan")
-    return mean, spread, len(ratios)
+    ratios = {id: t / length for id, t, length in orbits if length}
+    if not ratios:
+        return Summary(float("nan"), 0, 0, None)
+    return Summary(
+        median=statistics.median(ratios.values()),
+        inside=sum(abs(ratio - MEAN) <= SPREAD for ratio in ratios.values()),
+        count=len(ratios),
+        farthest=max(ratios, key=lambda id: abs(ratios[id] - MEAN)),
+    )

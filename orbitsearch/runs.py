@@ -12,6 +12,7 @@ from contextlib import closing
 from dataclasses import dataclass
 
 from orbitsearch.catalog import Catalog
+from orbitsearch.catalog_rows import lacks_kind
 from orbitsearch.errors import BadRequest
 from orbitsearch.identity import START_EQUAL
 from orbitsearch.orbit import Orbit, Start, Status
@@ -85,8 +86,7 @@ def run_search(
 
     def known(start: Start) -> bool:
         near = catalog.find_start(start.kind, start.p, start.q, START_EQUAL)
-        # A record of an early version without a type is worth meeting again: that fills it in.
-        if not near or catalog.get(near[0].id).orbit.braid is None:
+        if not near or not _is_complete(catalog.get(near[0].id).orbit):
             return False
         met.append(Known(start, near[0].id))
         return True
@@ -116,6 +116,17 @@ def run_search(
         raise
     finally:
         catalog.finish_run(run_id, dict(counts), state)
+
+
+def _is_complete(orbit: Orbit) -> bool:
+    """Whether meeting an orbit again could add nothing to its record.
+
+    A record of an early version may lack its type, and one that lists starts of fewer sets than it
+    runs through may be one of two that are the same orbit.
+    """
+    if lacks_kind(orbit) or orbit.symmetry is None:
+        return False
+    return {start.kind for start in orbit.starts} >= orbit.symmetry.reversals.keys()
 
 
 def import_rows(

@@ -9,6 +9,7 @@ import csv
 import io
 import json
 import math
+import re
 from collections.abc import Callable, Iterable
 from decimal import Decimal
 from typing import Any
@@ -189,9 +190,10 @@ def to_latex(records: Iterable[Record]) -> str:
     Returns
     -------
     str
-        Starts and periods with all of their digits, words in full, T* to ten digits.
+        Starts and periods with all of their digits, words in full, T* to ten digits; e is the
+        exponent sum, which decides together with the cyclic word in L and R.
     """
-    headings = ["id", "start", "p", "q", "T", "T*", "rotation", "word", "braid", "symmetry"]
+    headings = ["id", "start", "p", "q", "T", "T*", "rotation", "word", "braid", "e", "symmetry"]
     headings += ["stability"]
     rows = [
         [
@@ -203,12 +205,14 @@ def to_latex(records: Iterable[Record]) -> str:
             f"{record.orbit.rotation:.10g}",
             record.orbit.word,
             _braid(record.orbit, lambda braid: cycle_text(braid.cycle)),
+            _braid(record.orbit, lambda braid: braid.exponent_sum),
             record.orbit.symmetry.title if record.orbit.symmetry else "",
             record.orbit.stability.kind,
         ]
         for record in records
     ]
-    return _lay_out(headings, rows, "latex_booktabs")
+    # The library writes powers as accents that stand alone; they belong above the line.
+    return re.sub(r"\\\^{}(\d+)", r"$^{\1}$", _lay_out(headings, rows, "latex_booktabs"))
 
 
 def to_text(records: Iterable[Record]) -> str:
@@ -255,9 +259,9 @@ def kinds_to_text(kinds: Iterable[Kind]) -> str:
     Returns
     -------
     str
-        Dilatations rounded; the last column has the record with the shortest T*.
+        Entropies rounded; the last column has the record with the shortest T*.
     """
-    headings = ["orbits", "braid", "cycle", "exponent sum", "trace", "dilatation"]
+    headings = ["orbits", "braid", "cycle", "exponent sum", "trace", "entropy"]
     headings += ["choreographies", "stable", "least T*", "orbit"]
     rows = [
         [
@@ -266,7 +270,7 @@ def kinds_to_text(kinds: Iterable[Kind]) -> str:
             _short(cycle_text(kind.braid.cycle)),
             str(kind.braid.exponent_sum),
             _short_number(kind.braid.trace),
-            f"{kind.braid.dilatation:.6g}",
+            f"{kind.braid.entropy:.8g}",
             str(kind.choreographies),
             str(kind.stable),
             f"{kind.shortest:.10g}",
@@ -296,7 +300,7 @@ def _lay_out(headings: list[str], rows: list[list[str]], style: str) -> str:
 
 def _short(word: str) -> str:
     if len(word) <= WORD_ROOM:
-        return word
+        return word or "(empty)"
     return f"{word[: WORD_ROOM - 8]}... ({len(word)})"
 
 

@@ -22,6 +22,7 @@ from orbitsearch._letters import (
     check_letters,
     least_image,
     primitive_root,
+    shown,
     strip_ends,
 )
 from orbitsearch.errors import BadRequest
@@ -46,7 +47,8 @@ _TURN_BETWEEN = {
 _LONGEST_CYCLE = 10**6
 """Powers are written out up to this length; no motion has so many syzygies in a period."""
 
-_POWER = re.compile(r"(?:\(([LR]*)\)|([LR])(?=\^))(?:\^([1-9]\d{0,6}))?(?![\d^])")
+# Anything that fits nowhere is a token, too, so that nothing is skipped.
+_TOKEN = re.compile(r"\^[1-9][0-9]*|.", re.DOTALL)
 _REPEATED = re.compile(r"(LR|L|R)\1\1+")
 
 
@@ -223,16 +225,30 @@ def read_cycle(text: str, name: str = "text") -> str:
     >>> read_cycle("(RL)^3"), read_cycle("R (LR^2)^2"), read_cycle("()")
     ('LRLRLR', 'LRRLRRR', '')
     """
-    plain, found = "".join(text.split()), 1
-    empty = not plain
-    while found:
-        plain, found = _POWER.subn(lambda power: _written_out(power, name), plain)
-    if empty or not set(plain).issubset("LR"):
-        raise BadRequest(
-            f"`{name}` must be turns L and R with powers from 1 on, got {text!r}: write LLR or "
-            "(LR)^3"
-        )
-    return least_image([plain], "LR")
+    plain = "".join(text.split())
+    open_pieces: list[list[str]] = [[]]
+    before = ""
+    for token in _TOKEN.findall(plain):
+        here = open_pieces[-1]
+        if token == "(":
+            open_pieces.append([])
+        elif token == ")" and len(open_pieces) > 1:
+            open_pieces.pop()
+            open_pieces[-1].append("".join(here))
+        elif token in ("L", "R"):
+            here.append(token)
+        elif len(token) > 1 and before in ("L", "R", ")"):
+            here.append(_written_out(here.pop(), token[1:], name))
+        else:
+            break
+        before = token
+    else:
+        if plain and len(open_pieces) == 1:
+            return least_image(["".join(open_pieces[0])], "LR")
+    raise BadRequest(
+        f"`{name}` must be turns L and R with powers from 1 on, got {shown(text)}: write LLR or "
+        "(LR)^3"
+    )
 
 
 def _closed(crossings: Iterable[tuple[int, int]]) -> str:
@@ -253,12 +269,11 @@ def _power_text(repeated: re.Match[str]) -> str:
     return f"{base}^{len(repeated[0]) // len(piece)}"
 
 
-def _written_out(power: re.Match[str], name: str) -> str:
+def _written_out(piece: str, times: str, name: str) -> str:
     """Repeated piece for a power."""
-    piece, times = power[1] or power[2] or "", int(power[3] or 1)
-    if len(piece) * times > _LONGEST_CYCLE:
+    if len(times) > len(str(_LONGEST_CYCLE)) or len(piece) * int(times) > _LONGEST_CYCLE:
         raise BadRequest(
-            f"`{name}` must have at most {_LONGEST_CYCLE} turns when written out, got "
-            f"{power[0]!r}: write smaller powers"
+            f"`{name}` must have at most {_LONGEST_CYCLE} turns when written out, got a power of "
+            f"{shown(times)}: write smaller powers"
         )
-    return piece * times
+    return piece * int(times)

@@ -20,7 +20,17 @@ ROOT = Path(orbitsearch.__file__).parent
 FLOORS: tuple[dict[str, tuple[str, ...]], ...] = (
     {"errors": ("errors",), "kernels": ("_kernels",)},
     {
-        "words": ("words", "cycles", "artin", "turns", "braids", "_crossings", "_letters"),
+        "words": (
+            "words",
+            "cycles",
+            "artin",
+            "turns",
+            "braids",
+            "braid_pattern",
+            "_crossings",
+            "_letters",
+            "_surds",
+        ),
         "symmetry": ("symmetry",),
         "period law": ("period_law",),
         "workers": ("workers",),
@@ -54,14 +64,15 @@ FLOORS: tuple[dict[str, tuple[str, ...]], ...] = (
         "stability": ("stability",),
         "syzygies": ("syzygies",),
         "symmetry of an orbit": ("find_symmetry",),
+        "period": ("period",),
     },
     {"classify": ("classify",)},
     {"verify": ("verify",)},
     {"complete": ("complete",)},
     {"refine": ("refine",)},
-    {"search": ("search",)},
-    {"runs": ("runs",)},
-    {"cli": ("cli", "__main__")},
+    {"search": ("search",), "nearby": ("nearby",)},
+    {"runs": ("runs",), "plots": ("plots",)},
+    {"cli": ("cli", "__main__"), "lab": ("lab",)},
 )
 
 PLACE = {

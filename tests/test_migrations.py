@@ -8,6 +8,8 @@ New Astronomy 70 (2019) 22.
 
 import json
 import sqlite3
+import subprocess
+import sys
 from pathlib import Path
 
 import pytest
@@ -101,12 +103,15 @@ def test_verifying_a_record_fills_in_its_type_and_nothing_else(capsys, old: Path
         before = catalog.get(id)
     assert before.orbit.braid is None
     assert "not known" in run(capsys, "show", str(id), "--catalog", str(old)).out
-    assert run(capsys, "verify", str(id), "--catalog", str(old)).code == 0
+    ran = run(capsys, "verify", str(id), "--catalog", str(old))
+    assert ran.code == 0
+    assert "that is filled in now" in ran.out
     with Catalog.open(old) as catalog:
         after = catalog.get(id)
         assert id not in catalog.untyped()
     assert after.orbit.braid is not None
     assert after.orbit.symmetry is not None
+    assert after.orbit.margins is not None
     assert after.orbit.verdict == before.orbit.verdict
     assert after.orbit.starts == before.orbit.starts
     assert (after.created, after.run_id) == (before.created, before.run_id)
@@ -123,3 +128,30 @@ def test_another_search_fills_in_what_it_meets_and_files_nothing_twice(capsys, o
     assert open_before <= set(found["known"])
     with Catalog.open(old) as catalog:
         assert not open_before & set(catalog.untyped())
+
+
+@pytest.mark.parametrize(
+    "damage",
+    [
+        "record = '{'",
+        "record = '[]'",
+        'record = replace(record, \'"syzygies":"\', \'"syzygies":"X\')',
+        'record = replace(record, \'"syzygies":"\', \'"syzygies":"1\')',
+    ],
+)
+def test_a_damaged_record_does_not_lock_up_the_others(capsys, old: Path, damage: str) -> None:
+    with sqlite3.connect(old) as connection:
+        connection.execute(f"UPDATE orbits SET {damage} WHERE id = 3")
+    connection.close()
+    with Catalog.open(old) as catalog:
+        assert 3 in catalog.untyped()
+        assert catalog.get(1).orbit.braid is not None
+    assert run(capsys, "show", "1", "--catalog", str(old)).code == 0
+
+
+def test_two_programs_may_migrate_one_file_at_once(old: Path) -> None:
+    code = f"from orbitsearch.catalog import Catalog; Catalog.open({str(old)!r}).close()"
+    both = [subprocess.Popen([sys.executable, "-c", code]) for _ in range(2)]
+    assert [one.wait(timeout=60) for one in both] == [0, 0]
+    with Catalog.open(old) as catalog:
+        assert sum(kind.count for kind in catalog.kinds()) + len(catalog.untyped()) == 18

@@ -12,6 +12,7 @@ from argparse import Namespace
 from collections import Counter
 from collections.abc import Iterable, Iterator
 from contextlib import closing, contextmanager
+from dataclasses import asdict
 from pathlib import Path
 from typing import TYPE_CHECKING, Any, TypeGuard
 
@@ -19,6 +20,7 @@ from tqdm import tqdm
 
 from orbitsearch import period_law, tables
 from orbitsearch.catalog import Catalog
+from orbitsearch.catalog_rows import lacks_kind
 from orbitsearch.cli.describe import kind_json, law_text, orbit_text, record_text, verdict_text
 from orbitsearch.cli.report import complain, counts_text, say, say_json
 from orbitsearch.errors import BadRequest, OrbitsearchError
@@ -167,6 +169,7 @@ def verify(options: Namespace) -> int:
     from orbitsearch.refine import verify_as_given
 
     guess = (options.start, options.at, options.period)
+    fills = False
     if (options.id is None) == all(part is None for part in guess):
         raise BadRequest("`verify` takes a number ID, or `--start`, `--at` and `--period`")
     if options.id is None:
@@ -178,8 +181,9 @@ def verify(options: Namespace) -> int:
             filed = catalog.get(options.id).orbit
             start = filed.start
             found = verify_as_given(start.kind, start.p, start.q, float(start.period))
-            if filed.braid is None and not catalog.read_only and _may_be_filed(found):
+            if lacks_kind(filed) and not catalog.read_only and _may_be_filed(found):
                 catalog.add(found)
+                fills = True
     if isinstance(found, Orbit):
         value, text, status = found.to_json(), orbit_text(found), found.status
     else:
@@ -189,6 +193,8 @@ def verify(options: Namespace) -> int:
         say_json(value if options.id is None else {"id": options.id, **value})
     else:
         say(text)
+        if fills:
+            say("an early version had filed the orbit without its type; that is filled in now")
         if (
             options.id is None
             and isinstance(found, Orbit)
@@ -231,19 +237,18 @@ def list_kinds(options: Namespace) -> int:
         found = catalog.kinds()
         untyped = catalog.untyped()
         lengths = catalog.word_lengths("collinear")
+    law = period_law.summary(lengths)
     if options.json:
-        mean, spread, count = period_law.fit((period, length) for _, period, length in lengths)
-        law = {"mean": mean, "spread": spread, "orbits": count}
         kinds = [kind_json(kind) for kind in found]
-        say_json({"kinds": kinds, "untyped": untyped, "period_law": law})
+        say_json({"kinds": kinds, "untyped": untyped, "period_law": asdict(law)})
         return DONE
     say(tables.kinds_to_text(found) if found else "no orbits")
     if found:
-        say("\n" + law_text(lengths))
+        say("\n" + law_text(law))
     if untyped:
         say(
-            f"\n{len(untyped)} orbits filed by an early version have no type yet:"
-            f" `orbitsearch verify {untyped[0]}` gives it one, and so does another search"
+            f"\n{len(untyped)} orbits filed by an early version have no type yet: a search that"
+            f" meets them fills it in, and so does `orbitsearch verify {untyped[0]}` for one"
         )
     return DONE
 

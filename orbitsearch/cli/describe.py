@@ -5,7 +5,7 @@ from __future__ import annotations
 from typing import Any
 
 from orbitsearch import period_law
-from orbitsearch.braid_type import BraidType
+from orbitsearch.braid_type import BraidType, whole_number
 from orbitsearch.braids import Braid
 from orbitsearch.orbit import Check, Orbit, Status, Verdict
 from orbitsearch.records import Kind, Record
@@ -79,11 +79,11 @@ def _kind_lines(orbit: Orbit) -> list[str]:
 def _word_lines(orbit: Orbit) -> list[str]:
     ratio, residual = orbit.period_per_letter, orbit.law_residual
     root, power = root_and_power(orbit.word)
-    repeated = f", which is {_cut(root)} {power} times over" if power > 1 else ""
+    repeated = f", power {power} of {_cut(root)}" if power > 1 else ""
     lines = [_line("word", f"{_cut(orbit.word)}   length {len(orbit.word)}{repeated}")]
-    if ratio is not None and residual is not None:
-        distance = f"{residual:+.4f} from the published mean {PUBLISHED}"
-        lines.append(_more("T* over length", f"{ratio:.4f}, {distance}"))
+    if ratio is not None:
+        law = "" if residual is None else f", {residual:+.4f} from the published mean {PUBLISHED}"
+        lines.append(_more("T* over length", f"{ratio:.4f}{law}"))
     counts = f"length {len(orbit.cycle)}, of {len(orbit.syzygies)} alignments"
     lines.append(_line("syzygy cycle", f"{_cut(orbit.cycle)}   {counts}"))
     if orbit.margins is not None:
@@ -99,36 +99,44 @@ def _braid_lines(kind: BraidType | None) -> list[str]:
         return [_line("braid", "not known; `orbitsearch verify` with the orbit's number finds it")]
     braid = kind.braid
     lines = [
-        _line("braid", f"{_turns(braid)}, exponent sum {braid.exponent_sum}"),
+        _line("braid", _turns(braid)),
         _more("Artin word", _cut(" ".join(map(str, braid.artin)))),
         _more("trace", _cut(braid.trace_text)),
-        _more("dilatation", f"{_cut(braid.dilatation_text)} = {braid.dilatation:.12g}"),
-        _more("entropy", f"{braid.entropy:.12g}"),
+        *_stretching(braid),
         _more("windings", " ".join(map(str, kind.windings))),
     ]
     if kind.part > 1:
         part = kind.part_braid
-        size = f"trace {_cut(part.trace_text)}, dilatation {_cut(part.dilatation_text)}"
-        lines.append(_more(f"over T/{kind.part}", f"{_turns(part)}, {size}"))
+        lines.append(_more(f"over T/{kind.part}", f"{_turns(part)}, trace {_cut(part.trace_text)}"))
     return lines
 
 
+def _stretching(braid: Braid) -> list[str]:
+    if braid.kind != "pseudo-Anosov":
+        return []
+    return [
+        _more("dilatation", f"{_cut(braid.dilatation_text)} = {braid.dilatation:.12g}"),
+        _more("entropy", f"{braid.entropy:.12g}"),
+    ]
+
+
 def _turns(braid: Braid) -> str:
-    return f"{braid.kind}, {_cut(cycle_text(braid.cycle))}"
+    return f"{braid.kind}, {_cut(cycle_text(braid.cycle))}, exponent sum {braid.exponent_sum}"
 
 
 def _symmetry_lines(orbit: Orbit) -> list[str]:
     symmetry = orbit.symmetry
     if symmetry is None:
         return [_line("symmetry", "not known")]
-    frame = " in the frame that turns with it" if orbit.rotation else ""
+    turning = orbit.rotation and symmetry.names != ("none",)
+    frame = " in a frame that turns with it" if turning else ""
     lines = [
         _line("symmetry", f"{symmetry.title}{frame}"),
         *(_more("", clause) for clause in symmetry.describe().split("; ")),
         _more("", f"1/{symmetry.pieces} of the period generates the whole orbit"),
     ]
     if symmetry.deviation is not None:
-        lines.append(_more("departs by", f"{symmetry.deviation:.2g} of its size at most"))
+        lines.append(_more("holds to", f"{symmetry.deviation:.1g}"))
     return lines
 
 
@@ -153,8 +161,9 @@ def kind_json(kind: Kind) -> dict[str, Any]:
         "kind": braid.kind,
         "cycle": braid.cycle,
         "exponent_sum": braid.exponent_sum,
-        "trace": braid.trace,
+        "trace": whole_number(braid),
         "dilatation": braid.dilatation,
+        "entropy": braid.entropy,
         "count": kind.count,
         "choreographies": kind.choreographies,
         "stable": kind.stable,
@@ -163,20 +172,12 @@ def kind_json(kind: Kind) -> dict[str, Any]:
     }
 
 
-def law_text(lengths: list[tuple[int, float, int]]) -> str:
-    """How the words of orbits with a collinear start keep to the law of periods.
-
-    Parameters
-    ----------
-    lengths : list of (int, float, int)
-        Number, T* and length of the word of each.
-    """
-    mean, spread, count = period_law.fit((period, length) for _, period, length in lengths)
-    ratios = [(id, period / length) for id, period, length in lengths if length]
-    if not ratios:
-        return "no orbit with a collinear start has a word"
-    id, ratio = max(ratios, key=lambda pair: abs(pair[1] - mean))
+def law_text(summary: period_law.Summary) -> str:
+    """How the words of orbits with a collinear start keep to the law of periods."""
+    if summary.farthest is None:
+        return "no verified orbit with a collinear start has a word"
     return (
-        f"T* over word length of {count} orbits with a collinear start: {mean:.4g} ± {spread:.2g}"
-        f" (published: {PUBLISHED}); farthest: orbit {id} with {ratio:.4g}"
+        f"T* over word length, verified orbits with a collinear start: median {summary.median:.4g};"
+        f" {summary.inside} of {summary.count} within {PUBLISHED} (published);"
+        f" farthest: orbit {summary.farthest}"
     )

@@ -89,7 +89,7 @@ def make_parser() -> argparse.ArgumentParser:
     one.add_argument(
         "--braid", metavar="B",
         help="with this braid: its kind, a cyclic word such as (LR)^3, or an Artin word such as"
-        " '1 -2 1 -2'",
+        " '1 -2 1 -2 1 -2'",
     )  # fmt: skip
     one.add_argument(
         "--symmetry", metavar="NAME",
