@@ -1059,15 +1059,30 @@ def _lane_status(state, least, nearest, steps, max_steps):
 
 
 @_jit
+def _least_square(x):
+    """Least squared side of a state."""
+    least = np.inf
+    for p in range(3):
+        least = min(least, x[2 * p] ** 2 + x[2 * p + 1] ** 2)
+    return least
+
+
+@_jit
 def scan(w, x, times, nearest, max_steps, status, steps, counts, kinds, when, first, second):
-    """Carry n starts to their times and record every event on the way.
+    """Carry n starts to their times and record every event on the way; results replace the inputs.
 
     Parameters
     ----------
-    w, times, nearest, max_steps, status, steps
-        As for `flow`; times must be positive.  Starts that escape end with STATUS_ESCAPE.
+    w, max_steps, status, steps
+        As for `flow`.  Starts that escape end with STATUS_ESCAPE.
     x : array, shape (n, 12)
         Replaced by the last states.
+    times : array, shape (n,)
+        Positive.  Replaced by the times reached: the same, or the end of the step that ended the
+        start.
+    nearest : array, shape (n,)
+        As for `flow`.  Replaced by the least side seen, at the start and at the ends of steps.  A
+        close passage takes several steps: measured, this is up to 0.3 % above the true least side.
     counts : integer array, shape (n,)
         Number of events of each start, filled.
     kinds, when, first, second : arrays, shape (n, capacity)
@@ -1077,6 +1092,7 @@ def scan(w, x, times, nearest, max_steps, status, steps, counts, kinds, when, fi
     n = x.shape[0]
     who = np.full(LANES, -1, np.int64)
     now = np.zeros(LANES)
+    closest = np.zeros(LANES)
     table = np.zeros((4, SCAN_EVENTS, LANES))
     series = np.zeros((6, TERMS))
     state = np.zeros(12)
@@ -1095,6 +1111,7 @@ def scan(w, x, times, nearest, max_steps, status, steps, counts, kinds, when, fi
                 now[lane] = 0.0
                 _put(w, lane, x[i])
                 _start_events(lane, x[i], table)
+                closest[lane] = _least_square(x[i])
                 running += 1
                 following += 1
         if running == 0:
@@ -1126,6 +1143,9 @@ def scan(w, x, times, nearest, max_steps, status, steps, counts, kinds, when, fi
                     counts[i], kinds[i], when[i], first[i], second[i],
                 )  # fmt: skip
             now[lane] += h
+            # False for NaN, which a passage through a collision leaves.
+            if w[H, 1, lane] < closest[lane]:
+                closest[lane] = w[H, 1, lane]
             _get(w, lane, state)
             status[i] = _lane_status(state, w[H, 1, lane], nearest[i], steps[i], max_steps)
             if counts[i] > kinds.shape[1]:
@@ -1138,6 +1158,10 @@ def scan(w, x, times, nearest, max_steps, status, steps, counts, kinds, when, fi
             elif status[i] == STATUS_DONE:
                 continue
             x[i] = state
+            # NaN where two bodies begin in one place: that start got nowhere.
+            reached = now[lane] if now[lane] >= 0.0 else 0.0
+            times[i] = min(times[i], reached)
+            nearest[i] = math.sqrt(closest[lane])
             _park(w, lane, 0)
             who[lane] = -1
             running -= 1

@@ -1,6 +1,7 @@
 """Where records come from: search runs, and rows of published tables."""
 
 import json
+from dataclasses import replace
 from typing import Any
 
 from orbitsearch.catalog_file import CatalogFile
@@ -8,11 +9,15 @@ from orbitsearch.catalog_rows import now, tool_version
 from orbitsearch.errors import BadCatalog, BadRequest
 from orbitsearch.records import Run, Source
 
-__all__ = ["END_STATES", "Provenance"]
+__all__ = ["END_STATES", "TILES", "Provenance"]
 
 END_STATES = ("finished", "stopped", "failed")
 """How a run can end: by itself, because it was asked to, because of an error.  A run that was
 killed stays ``running``."""
+TILES = "tiles_"
+"""How the keys of counts begin that say which tiles of a search are done, to resume it."""
+
+_SELECT_RUNS = "SELECT id, started, finished, tool_version, request, counts, state FROM runs"
 
 
 class Provenance(CatalogFile):
@@ -74,19 +79,96 @@ class Provenance(CatalogFile):
                 (now(), json.dumps(counts), state, id),
             )
 
+    def note_progress(self, id: int, counts: dict[str, Any]) -> None:
+        """Note how far a search came that is still running.
+
+        Parameters
+        ----------
+        id : int
+            Number of the run.
+        counts : dict
+            What came of it until now, as JSON values.
+
+        Raises
+        ------
+        BadRequest
+            When there is no such run.
+        BadCatalog
+            When the catalogue cannot be written.
+        """
+        with self._writing() as connection:
+            self._check_run(id, "id")
+            connection.execute("UPDATE runs SET counts = ? WHERE id = ?", (json.dumps(counts), id))
+
+    def unfinished_run(self, id: int) -> Run:
+        """A run that may be resumed, with everything that was noted of its progress.
+
+        Parameters
+        ----------
+        id : int
+            Number of the run.
+
+        Returns
+        -------
+        Run
+            Its counts include the lists of tiles that `runs` leaves out.
+
+        Raises
+        ------
+        BadRequest
+            When there is no such run, or it is finished.
+        """
+        with self._reading() as connection:
+            self._check_run(id, "resume")
+            row = connection.execute(f"{_SELECT_RUNS} WHERE id = ?", (id,)).fetchone()
+        run = _run(row)
+        if run.state == "finished":
+            raise BadRequest(
+                f"`resume` must name a run that was stopped or killed, run {id} is finished: "
+                "search anew"
+            )
+        return run
+
+    def reopen_run(self, id: int) -> int:
+        """Note that a run that did not finish goes on.
+
+        Parameters
+        ----------
+        id : int
+            Number of the run.
+
+        Returns
+        -------
+        int
+            How many records it has filed.
+
+        Raises
+        ------
+        BadRequest
+            When there is no such run, or it is finished.
+        BadCatalog
+            When the catalogue cannot be written.
+        """
+        with self._writing() as connection:
+            self.unfinished_run(id)
+            connection.execute(
+                "UPDATE runs SET finished = NULL, state = 'running' WHERE id = ?", (id,)
+            )
+            filed = connection.execute("SELECT count(*) FROM orbits WHERE run_id = ?", (id,))
+            return int(filed.fetchone()[0])
+
     def runs(self) -> list[Run]:
         """All search runs, oldest first.
 
         Returns
         -------
         list of Run
+            Their counts are without the lists of tiles, which only `unfinished_run` needs.
         """
         with self._reading() as connection:
-            rows = connection.execute(
-                "SELECT id, started, finished, tool_version, request, counts, state "
-                "FROM runs ORDER BY id"
-            ).fetchall()
-        return [_run(row) for row in rows]
+            rows = connection.execute(f"{_SELECT_RUNS} ORDER BY id").fetchall()
+        found = [_run(row) for row in rows]
+        return [replace(run, counts=_without_tiles(run.counts)) for run in found]
 
     def add_source(
         self,
@@ -169,7 +251,10 @@ class Provenance(CatalogFile):
         return [Source(*row) for row in rows]
 
     def _check_run(self, id: int, name: str) -> None:
-        found = self._connection.execute("SELECT 1 FROM runs WHERE id = ?", (id,)).fetchone()
+        found = None
+        # SQLite's integers end at 64 bits; a number beyond them names nothing either.
+        if abs(id) < 2**63:
+            found = self._connection.execute("SELECT 1 FROM runs WHERE id = ?", (id,)).fetchone()
         if found is None:
             raise BadRequest(
                 f"`{name}` must name a run of this catalogue, got {id}: "
@@ -192,6 +277,12 @@ class Provenance(CatalogFile):
                 "list the catalogue for the others"
             )
         return int(found[0])
+
+
+def _without_tiles(counts: dict[str, Any] | None) -> dict[str, Any] | None:
+    if counts is None:
+        return None
+    return {key: value for key, value in counts.items() if not key.startswith(TILES)}
 
 
 def _run(row: tuple[Any, ...]) -> Run:

@@ -11,12 +11,13 @@ finishes first.
 
 from __future__ import annotations
 
+import itertools
 import math
 from collections import Counter, deque
-from collections.abc import Callable, Generator, Iterator
+from collections.abc import Callable, Collection, Generator, Iterator
 from concurrent.futures import Executor, Future
 from dataclasses import asdict, dataclass, field
-from typing import Any
+from typing import Any, Self
 
 import numpy as np
 
@@ -26,12 +27,13 @@ from orbitsearch.errors import BadRequest
 from orbitsearch.identity import START_EQUAL
 from orbitsearch.orbit import Orbit, Start, Status, Verdict
 from orbitsearch.refine import refine
-from orbitsearch.scan import candidates, scan
+from orbitsearch.scan import Outcomes, candidates, scan
 from orbitsearch.shoot import shoot
 from orbitsearch.starts import CONDITIONS, StartSet, start_set
 from orbitsearch.workers import check_workers, result_of, worker_pool
 
 __all__ = [
+    "TILE",
     "Candidate",
     "Event",
     "Finished",
@@ -39,12 +41,13 @@ __all__ = [
     "Rejected",
     "SearchRequest",
     "TileDone",
+    "TileSettled",
     "search",
 ]
 
-# Cells along the side of a tile: enough candidates to keep all lanes busy, few enough that stopping
-# waits for a second or two.
 TILE = 25
+"""Cells along the side of a tile: enough candidates to keep all lanes busy, few enough that there
+is something new to look at every second."""
 # A guess may move this many cells; farther away another triangle has found the same orbit.
 REACH_CELLS = 8.0
 LARGEST_GRID = 50_000_000
@@ -126,13 +129,45 @@ class SearchRequest:
         """Plain JSON value."""
         return asdict(self)
 
+    @classmethod
+    def from_json(cls, value: Any) -> Self:
+        """The request that `to_json` gave as this value.
+
+        Raises
+        ------
+        BadRequest
+            When the value is no request, or one that breaks a rule.
+        """
+        try:
+            p0, p1, q0, q1 = map(float, value["window"])
+            n, m = map(int, value["grid"])
+            start, scaled_period = str(value["start"]), float(value["scaled_period"])
+        except (KeyError, TypeError, ValueError, OverflowError):
+            raise BadRequest(
+                f"a request must have start, window, grid and scaled_period: {value}; search anew"
+            ) from None
+        return cls(start, (p0, p1, q0, q1), (n, m), scaled_period)
+
 
 @dataclass(frozen=True)
 class TileDone:
-    """A tile was scanned and its candidates were worked off; counts are those of the tile."""
+    """A tile was scanned and its candidates were worked off; counts are those of the tile.
+
+    Outcomes are those of all its starts, also of those on the edges it shares with its neighbours;
+    counts leave out the edges that belong to an earlier tile.
+    """
 
     tile: int
     tiles: int
+    counts: Counter[str]
+    outcomes: Outcomes
+
+
+@dataclass(frozen=True)
+class TileSettled:
+    """Every orbit that came of a tile was handed out; counts say what became of its arcs."""
+
+    tile: int
     counts: Counter[str]
 
 
@@ -161,18 +196,36 @@ class Rejected:
 
 @dataclass(frozen=True)
 class Finished:
-    """The whole window is done; counts of the whole search."""
+    """The whole window is done; counts of this whole search."""
 
     counts: Counter[str]
 
 
-Event = TileDone | Candidate | Found | Rejected | Finished
+Event = TileDone | TileSettled | Candidate | Found | Rejected | Finished
 
 
 @dataclass(frozen=True)
 class _Tile:
     counts: Counter[str]
+    outcomes: Outcomes
     arcs: list[Arc] = field(default_factory=list)
+
+
+@dataclass(frozen=True)
+class _Sent:
+    """An arc on its way through verification, and where to count what becomes of it."""
+
+    start: Start
+    future: Future[Orbit | Verdict]
+    counts: Counter[str]
+
+
+@dataclass(frozen=True)
+class _EndOfTile:
+    """Stands in the queue behind the arcs of a tile."""
+
+    tile: int
+    counts: Counter[str]
 
 
 def _numbers(values: tuple[float, ...]) -> str:
@@ -194,9 +247,8 @@ def _scan_tile(request: SearchRequest, tile: int) -> _Tile:
     p = np.linspace(*request.window[:2], request.grid[0])
     q = np.linspace(*request.window[2:], request.grid[1])
     # Neighbouring tiles share the starts of their common edge.
-    mine_p = p[rows[i][0] : rows[i][1] + 1]
-    mine_q = q[columns[j][0] : columns[j][1] + 1]
-    seen = scan(starts, mine_p, mine_q, request.scaled_period)
+    (top, bottom), (left, right) = rows[i], columns[j]
+    seen = scan(starts, p[top : bottom + 1], q[left : right + 1], request.scaled_period)
     found = candidates(starts, seen, request.scaled_period)
     # Starts of a common edge are counted in the first tile that has them.
     valid, status = (values[int(i > 0) :, int(j > 0) :] for values in (seen.valid, seen.status))
@@ -226,7 +278,7 @@ def _scan_tile(request: SearchRequest, tile: int) -> _Tile:
             counts["repeated"] += 1
         else:
             arcs.append(arc)
-    return _Tile(counts, arcs)
+    return _Tile(counts, Outcomes.of(seen, (top, bottom + 1), (left, right + 1)), arcs)
 
 
 def _close(one: Arc, other: Arc) -> bool:
@@ -258,16 +310,16 @@ class _Search:
         self.counts: Counter[str] = Counter()
         self.seen: list[tuple[float, float]] = []
         self.found: list[tuple[float, float]] = []
-        self.under_way: deque[tuple[Start, Future[Orbit | Verdict]]] = deque()
+        self.under_way: deque[_Sent | _EndOfTile] = deque()
 
-    def _is_new(self, arc: Arc) -> bool:
+    def _is_new(self, arc: Arc, counts: Counter[str]) -> bool:
         """Whether no such start was met in this run or is in the catalogue."""
         if self._near(self.seen, (arc.p, arc.q)):
-            self.counts["repeated"] += 1
+            counts["repeated"] += 1
             return False
         self.seen.append((arc.p, arc.q))
         if self.known(self._start(arc)):
-            self.counts["known"] += 1
+            counts["known"] += 1
             return False
         return True
 
@@ -283,36 +335,53 @@ class _Search:
     def take_tile(self, tile: int, result: _Tile) -> Iterator[Event]:
         """Count a tile, send its new arcs on to verification."""
         self.counts += result.counts
+        counts: Counter[str] = Counter()
         for arc in result.arcs:
-            if self._is_new(arc):
+            if self._is_new(arc, counts):
                 start = self._start(arc)
                 yield Candidate(start, CONDITIONS[arc.kind].label)
-                self.under_way.append((start, self.pool.submit(_complete, self.request.start, arc)))
-        yield TileDone(tile, self.request.tiles, result.counts)
+                future = self.pool.submit(_complete, self.request.start, arc)
+                self.under_way.append(_Sent(start, future, counts))
+        self.under_way.append(_EndOfTile(tile, counts))
+        yield TileDone(tile, self.request.tiles, result.counts, result.outcomes)
 
     def take_orbits(self, wait: bool) -> Iterator[Event]:
-        """Verified orbits in the order they were sent, those that are ready or all."""
-        while self.under_way and (wait or self.under_way[0][1].done()):
-            start, future = self.under_way.popleft()
-            outcome = result_of(future)
-            verdict = outcome if isinstance(outcome, Verdict) else outcome.verdict
-            if isinstance(outcome, Verdict) or verdict.status is Status.REJECTED:
-                self.counts["rejected"] += 1
-                self.counts[f"rejected: {verdict.reason.split(' is ')[0]}"] += 1
-                yield Rejected(start, verdict)
-                continue
-            if outcome.scaled_period > self.request.scaled_period:
-                self.counts["beyond the scaled period"] += 1
-                continue
-            places = [(s.p, s.q) for s in outcome.starts if s.kind == self.request.start]
-            if any(self._near(self.found, place) for place in places):
-                # Its other start was under way before this process knew that the two are one.
-                self.counts["repeated"] += 1
-                continue
-            self.found += places
-            self.seen += places
-            self.counts[str(verdict.status)] += 1
-            yield Found(outcome)
+        """Verified orbits in the order they were sent, those that are ready or all.
+
+        A tile is settled when its end comes out of the queue.  Whatever was dropped on the way as
+        a repetition repeats an arc that stood before it, so that has been handed out as well.
+        """
+        while self.under_way:
+            first = self.under_way[0]
+            if isinstance(first, _Sent) and not (wait or first.future.done()):
+                return
+            self.under_way.popleft()
+            if isinstance(first, _EndOfTile):
+                self.counts += first.counts
+                yield TileSettled(first.tile, first.counts)
+            else:
+                yield from self._take_orbit(first)
+
+    def _take_orbit(self, sent: _Sent) -> Iterator[Event]:
+        outcome = result_of(sent.future)
+        verdict = outcome if isinstance(outcome, Verdict) else outcome.verdict
+        if isinstance(outcome, Verdict) or verdict.status is Status.REJECTED:
+            sent.counts["rejected"] += 1
+            sent.counts[f"rejected: {verdict.reason.split(' is ')[0]}"] += 1
+            yield Rejected(sent.start, verdict)
+            return
+        if outcome.scaled_period > self.request.scaled_period:
+            sent.counts["beyond the scaled period"] += 1
+            return
+        places = [(s.p, s.q) for s in outcome.starts if s.kind == self.request.start]
+        if any(self._near(self.found, place) for place in places):
+            # Its other start was under way before this process knew that the two are one.
+            sent.counts["repeated"] += 1
+            return
+        self.found += places
+        self.seen += places
+        sent.counts[str(verdict.status)] += 1
+        yield Found(outcome)
 
 
 def search(
@@ -320,6 +389,7 @@ def search(
     *,
     known: Callable[[Start], bool] = lambda _: False,
     workers: int | None = None,
+    done: Collection[int] = (),
 ) -> Generator[Event, None, None]:
     """Search a window for periodic orbits.
 
@@ -331,6 +401,9 @@ def search(
         it were consumed, so it may look at what those were filed as.
     workers : int, optional
         Worker processes; by default one for each core.  1 works in this process.
+    done : collection of int, optional
+        Numbers of tiles to leave out, because an earlier search has settled them (`TileSettled`).
+        What came of those must be `known`.
 
     Notes
     -----
@@ -339,23 +412,33 @@ def search(
 
     Yields
     ------
-    TileDone, Candidate, Found, Rejected
+    TileDone, TileSettled, Candidate, Found, Rejected
         As they happen, tiles in order; closing the iterator stops the workers.
     Finished
-        Last, with the counts of everything.
+        Last, with the counts of everything that this search did.
+
+    Raises
+    ------
+    BadRequest
+        When `workers` or `done` breaks a rule.
     """
     workers = check_workers(workers)
+    if wrong := [tile for tile in done if not 0 <= tile < request.tiles]:
+        raise BadRequest(f"`done` must hold tiles from 0 to {request.tiles - 1}: {wrong[0]}")
+    left = iter(sorted(set(range(request.tiles)) - set(done)))
+    # A few tiles ahead keep every worker busy without letting verification starve; alone, this
+    # process would only be late to tell of the first.
+    ahead = 2 * workers if workers > 1 else 1
     if workers > 1:
         _warm_up()
     with worker_pool(workers) as pool:
         run = _Search(request, known, pool)
         pending: deque[tuple[int, Future[_Tile]]] = deque()
-        following = 0
-        while following < request.tiles or pending:
-            # A few tiles ahead keep every worker busy without letting verification starve.
-            while following < request.tiles and len(pending) < 2 * workers:
-                pending.append((following, pool.submit(_scan_tile, request, following)))
-                following += 1
+        while True:
+            for tile in itertools.islice(left, ahead - len(pending)):
+                pending.append((tile, pool.submit(_scan_tile, request, tile)))
+            if not pending:
+                break
             tile, future = pending.popleft()
             yield from run.take_tile(tile, result_of(future))
             yield from run.take_orbits(wait=False)

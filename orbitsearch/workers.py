@@ -1,7 +1,8 @@
 """Worker processes: started alike on every system, deaf to Ctrl-C, gone when their parent is.
 
 The parent alone decides what Ctrl-C means, so a worker must not hear of it, not even while it
-starts; and a parent that is killed cannot tell its workers, so they watch it.
+starts; and a parent that is killed cannot tell its workers, so they watch it.  A parent that wants
+no more results tells them the same way, and they leave in the middle of what they do.
 """
 
 from __future__ import annotations
@@ -15,6 +16,7 @@ from concurrent.futures import Executor, Future, ProcessPoolExecutor
 from concurrent.futures.process import BrokenProcessPool
 from contextlib import contextmanager
 from multiprocessing import resource_tracker
+from multiprocessing.connection import Connection, wait
 from typing import Any
 
 from orbitsearch.errors import BadRequest, OrbitsearchError
@@ -32,17 +34,17 @@ def check_workers(workers: int | None) -> int:
     return workers
 
 
-def _start_worker() -> None:
+def _start_worker(stop: Connection) -> None:
     # Ctrl-C goes to every process of the terminal; the parent alone decides what it means.
     signal.signal(signal.SIGINT, signal.SIG_IGN)
-    threading.Thread(target=_end_with_parent, daemon=True).start()
+    threading.Thread(target=_end_with_parent, args=[stop], daemon=True).start()
 
 
-def _end_with_parent() -> None:
+def _end_with_parent(stop: Connection) -> None:
     # A killed parent cannot tell its workers, and they hold both ends of the pipe they wait on.
     parent = multiprocessing.parent_process()
-    if parent is not None:
-        parent.join()
+    # Nobody reads what is sent to stop, so that every worker sees it.
+    wait([stop] if parent is None else [stop, parent.sentinel])
     os._exit(1)
 
 
@@ -60,25 +62,32 @@ class _Inline(Executor):
 def worker_pool(workers: int) -> Iterator[Executor]:
     """Executor with that many processes; for one it works in this process.
 
-    Leaving it drops what has not begun and waits for what has.
+    Leaving it at the end of the block drops what has not begun and waits for what has.  Leaving it
+    by an exception, or because the generator around it is closed, ends the workers at once: they
+    hold no files or locks of ours, only work that nobody waits for.
     """
     if workers == 1:
         yield _Inline()
         return
     # Spawned, not forked: the same on every system, and safe beside threads of a notebook.
-    pool = ProcessPoolExecutor(
-        workers, multiprocessing.get_context("spawn"), initializer=_start_worker
-    )
+    context = multiprocessing.get_context("spawn")
+    stopped, stop = context.Pipe(duplex=False)
+    pool = ProcessPoolExecutor(workers, context, initializer=_start_worker, initargs=(stopped,))
     try:
         with _interrupts_held():
             # Each task starts a worker as long as none is idle yet.
             for _ in range(workers):
                 pool.submit(os.getpid)
         yield pool
+    except BaseException:
+        stop.send(None)
+        raise
     finally:
         # A second Ctrl-C, from someone impatient, must not leave workers behind.
         with _interrupts_held():
             pool.shutdown(wait=True, cancel_futures=True)
+        stop.close()
+        stopped.close()
 
 
 @contextmanager

@@ -82,4 +82,4 @@ def test_python_version_is_said_once_the_same_everywhere():
 def test_developers_names_files_that_exist():
     for name in re.findall(r"`((?:orbitsearch|tests|\.ci|starts|cli)/[\w./]+)`", DEVELOPERS):
         here = ROOT / name if (ROOT / name).exists() else ROOT / "orbitsearch" / name
-        assert here.exists() or name == "orbitsearch/lab/" or name == "orbitsearch/plots", name
+        assert here.exists(), name

@@ -50,6 +50,7 @@ FLOORS: tuple[dict[str, tuple[str, ...]], ...] = (
         "starts": ("starts",),
         "shape": ("shape", "strands"),
         "tables": ("tables", "starts_table"),
+        "describe": ("describe",),
         "catalog": (
             "catalog",
             "catalog_file",
@@ -72,7 +73,8 @@ FLOORS: tuple[dict[str, tuple[str, ...]], ...] = (
     {"refine": ("refine",)},
     {"search": ("search",), "nearby": ("nearby",)},
     {"runs": ("runs",), "plots": ("plots",)},
-    {"cli": ("cli", "__main__"), "lab": ("lab",)},
+    {"lab": ("lab",)},
+    {"cli": ("cli", "__main__")},
 )
 
 PLACE = {

@@ -8,6 +8,7 @@ stopped by Ctrl-C.
 
 from __future__ import annotations
 
+import signal
 from collections.abc import Sequence
 
 from orbitsearch.cli.parser import make_parser
@@ -35,6 +36,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
     """
     any_letter()
     options = make_parser().parse_args(arguments)
+    before = {number: signal.getsignal(number) for number in (signal.SIGINT, signal.SIGTERM)}
     try:
         return int(options.run(options))
     except OrbitsearchError as problem:
@@ -43,6 +45,13 @@ def main(arguments: Sequence[str] | None = None) -> int:
     except KeyboardInterrupt:
         complain("stopped")
         return STOPPED
+    finally:
+        # A program of its own ends now, which takes a moment in which Ctrl-C could only kill it.
+        # Called with arguments, inside of another program, it leaves signals as they were.
+        if arguments is not None:
+            for number, handler in before.items():
+                if signal.getsignal(number) is not handler:
+                    signal.signal(number, handler)
 
 
 def _typed(message: str) -> str:

@@ -21,8 +21,8 @@ from tqdm import tqdm
 from orbitsearch import period_law, tables
 from orbitsearch.catalog import Catalog
 from orbitsearch.catalog_rows import lacks_kind
-from orbitsearch.cli.describe import kind_json, law_text, orbit_text, record_text, verdict_text
 from orbitsearch.cli.report import complain, counts_text, say, say_json
+from orbitsearch.describe import kind_json, law_text, orbit_text, record_text, verdict_text
 from orbitsearch.errors import BadRequest, OrbitsearchError
 from orbitsearch.orbit import Orbit, Status, Verdict
 
@@ -107,12 +107,16 @@ def search(options: Namespace) -> int:
 def _stops_once() -> Iterator[None]:
     """The first Ctrl-C stops; a second one, impatient, would only interrupt the tidying up.
 
-    A batch system that ends a job asks first, by SIGTERM, and is answered alike.
+    A batch system that ends a job asks first, by SIGTERM, and is answered alike.  Who was stopped
+    is about to end and stays deaf until then; `orbitsearch.cli.main` lets others listen again.
     """
     numbers = (signal.SIGINT, signal.SIGTERM)
     before = {number: signal.getsignal(number) for number in numbers}
+    stopped = False
 
     def stop(*_: object) -> None:
+        nonlocal stopped
+        stopped = True
         for number in numbers:
             signal.signal(number, signal.SIG_IGN)
         raise KeyboardInterrupt
@@ -122,8 +126,9 @@ def _stops_once() -> Iterator[None]:
     try:
         yield
     finally:
-        for number, handler in before.items():
-            signal.signal(number, handler)
+        if not stopped:
+            for number, handler in before.items():
+                signal.signal(number, handler)
 
 
 def _is_cold() -> bool:
@@ -297,6 +302,32 @@ def _write(path: Path, text: str) -> None:
         ) from None
 
 
+def figure(options: Namespace) -> int:
+    """Write a page on one filed orbit."""
+    try:
+        from orbitsearch.plots import figure_page
+    except ImportError as problem:
+        raise OrbitsearchError(str(problem)) from None
+
+    with Catalog.open(options.catalog, create=False) as catalog:
+        record = catalog.get(options.id)
+    _write(options.output, figure_page(record, record_text(record)))
+    if options.json:
+        say_json({"id": record.id, "output": str(options.output)})
+    else:
+        say(f"orbit {record.id} written to {options.output}")
+    return DONE
+
+
+def lab(options: Namespace) -> int:
+    """Open the notebooks in JupyterLab, until it is closed."""
+    from orbitsearch.lab.launch import start_lab
+
+    return start_lab(
+        options.folder, open_browser=not options.no_browser, port=options.port, say=say
+    )
+
+
 def import_table(options: Namespace) -> int:
     """Refine and file the rows of a published table."""
     from orbitsearch.runs import ImportedRow, import_rows
@@ -398,6 +429,8 @@ COMMANDS = {
     "kinds": list_kinds,
     "show": show,
     "export": export,
+    "figure": figure,
+    "lab": lab,
     "import": import_table,
     "runs": runs,
     "starts": starts,

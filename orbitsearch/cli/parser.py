@@ -112,6 +112,22 @@ def make_parser() -> argparse.ArgumentParser:
     one.add_argument("file", type=Path, metavar="FILE.csv", help="columns: start, p, q, period")
     one.add_argument("--source", required=True, metavar="TEXT", help="citation, kept with each row")
 
+    one = command("figure", "Write the figures and numbers of one filed orbit as an HTML page.")
+    one.add_argument("id", type=int, metavar="ID", help="number in the catalogue")
+    one.add_argument(
+        "--output", type=Path, metavar="FILE.html", required=True,
+        help="one file that needs no network",
+    )  # fmt: skip
+
+    one = command("lab", "Open the notebooks in JupyterLab.", catalog=False)
+    one.add_argument(
+        "--folder", type=Path, default=DEFAULT_CATALOG.parent, metavar="DIR",
+        help="where the notebooks are copied to, beside their catalogue orbits.db"
+        f" (default: {DEFAULT_CATALOG.parent})",
+    )  # fmt: skip
+    one.add_argument("--port", type=int, metavar="N", help="port of the server (default: a free)")
+    one.add_argument("--no-browser", action="store_true", help="only print the address")
+
     command("runs", "List the searches that were run into the catalogue.")
     command("starts", "Describe the start sets and their parameters.", catalog=False)
     return parser

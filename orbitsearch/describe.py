@@ -1,4 +1,4 @@
-"""Orbits, braid types and verdicts in readable lines, and JSON that only commands give."""
+"""Orbits, braid types and verdicts in readable lines, for commands, panels and pages."""
 
 from __future__ import annotations
 
