@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable
 from functools import partial
 from pathlib import Path
-from typing import Any
+from typing import Any, NamedTuple
 
 import ipywidgets as widgets
 
@@ -17,7 +17,6 @@ from orbitsearch.lab.host import Figure
 from orbitsearch.lab.loop import Worker
 from orbitsearch.lab.orbit_detail import OrbitDetail
 from orbitsearch.lab.parts import STYLE, Message, answered, button, choice_list, heading
-from orbitsearch.orbit import Orbit
 from orbitsearch.plots.catalog_plots import (
     law_data,
     law_figure,
@@ -40,6 +39,14 @@ __all__ = ["BrowsePanel"]
 LISTED = 500
 ANY = "any"
 _WIDE = {"description_width": "80px"}
+
+
+class _Read(NamedTuple):
+    """What was read of a catalogue; `types` has the number of its kind for each record."""
+
+    records: list[Record]
+    kinds: list[Kind]
+    types: dict[int, int | None]
 
 
 class BrowsePanel(widgets.VBox):
@@ -67,6 +74,7 @@ class BrowsePanel(widgets.VBox):
         self.detail = OrbitDetail()
         self._records: dict[int, Record] = {}
         self._kinds: list[Kind] = []
+        self._types: dict[int, int | None] = {}
         self._listening = True
         self._worker: Worker | None = None
         kind = self.shown_set.value
@@ -161,18 +169,23 @@ class BrowsePanel(widgets.VBox):
         self._worker = Worker(lambda: iter([self._load()]), self._take, self._fail)
         self._worker.start()
 
-    def _load(self) -> tuple[list[Record], list[Kind]]:
+    def _load(self) -> _Read:
         if not self.path.exists():
-            return [], []
+            return _Read([], [], {})
         with Catalog.open(self.path, create=False) as catalog:
-            return [*catalog.orbits()], catalog.kinds()
+            records, kinds = [*catalog.orbits()], catalog.kinds()
+        # Found once: a choice of type asks every record for its own.
+        number = {kind.braid: n for n, kind in enumerate(kinds)}
+        known = ((record.id, record.orbit.braid) for record in records)
+        types = {id: number.get(one.braid.canonical()) for id, one in known if one is not None}
+        return _Read(records, kinds, types)
 
     def _fail(self, text: str) -> None:
         self.message.say(text, "wrong")
 
     @answered
-    def _take(self, found: list[tuple[list[Record], list[Kind]]]) -> None:
-        records, self._kinds = found[-1]
+    def _take(self, found: list[_Read]) -> None:
+        records, self._kinds, self._types = found[-1]
         self._records = {record.id: record for record in records}
         longest = max((record.orbit.scaled_period for record in records), default=99.0)
         self._listening = False
@@ -197,7 +210,6 @@ class BrowsePanel(widgets.VBox):
     def _meets(self, record: Record) -> bool:
         orbit = record.orbit
         low, high = self.periods.value
-        kind = None if self.kinds.value is None else self._kinds[self.kinds.value]
         names = () if orbit.symmetry is None else orbit.symmetry.names
         word = self.word.value.strip()
         return (
@@ -211,7 +223,7 @@ class BrowsePanel(widgets.VBox):
             and (
                 self.source.value == ANY or bool(record.sources) == (self.source.value == "matched")
             )
-            and (kind is None or _is_of(orbit, kind))
+            and self.kinds.value in (None, self._types.get(record.id))
             and (not word or contains(orbit.word, word))
         )
 
@@ -302,10 +314,6 @@ class BrowsePanel(widgets.VBox):
         if len(records) == 1:
             return figure_page(records[0], record_text(records[0]))
         return catalog_page(records, record_text)
-
-
-def _is_of(orbit: Orbit, kind: Kind) -> bool:
-    return orbit.braid is not None and orbit.braid.braid.canonical() == kind.braid
 
 
 def _kind_row(kind: Kind) -> str:

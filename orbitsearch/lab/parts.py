@@ -15,7 +15,7 @@ from orbitsearch.lab.loop import on_kernel_loop
 __all__ = ["Message", "answered", "button", "choice_list", "facts", "heading", "shown_number"]
 
 # Colours that reach contrast 4:1 on white and on #111111, and a word that says the same.
-_LOOKS = {"": ("#777777", ""), "done": ("#00835c", ""), "wrong": ("#c8553d", "Not done: ")}
+_LOOKS = {"": ("#777777", ""), "done": ("#0d8a60", ""), "wrong": ("#c8553d", "Not done: ")}
 
 
 class Message(widgets.HTML):

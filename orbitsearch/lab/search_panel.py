@@ -268,9 +268,10 @@ class SearchPanel(widgets.VBox):
 
     def _tell(self) -> None:
         passed = time.monotonic() - self._began
-        left = passed / max(self._done, 1) * (self.progress.max - self.progress.value)
+        to_do = self.progress.max - self.progress.value
+        left = f", about {passed / max(self._done, 1) * to_do:.0f} s left" if to_do else ""
         parts = [
-            f"{self.progress.value} of {self.progress.max} tiles, about {left:.0f} s left",
+            f"{self.progress.value} of {self.progress.max} tiles{left}",
             f"{self._counts['starts']:,} starts, {self._counts['candidates']:,} candidates",
             f"{len(self._new)} new, {len(self._known)} known orbits",
             *(
@@ -395,5 +396,5 @@ def _row(id: int, orbit: Orbit) -> str:
     word = orbit.word if len(orbit.word) <= 20 else f"{orbit.word[:14]}.. ({len(orbit.word)})"
     return (
         f"{id:>5}  T* {shown_number(orbit.scaled_period):<9} {word or '(empty)':<22}"
-        f" {orbit.stability.kind:<24} {symmetry:<20} {orbit.status}"
+        f" {orbit.stability.kind:<29} {symmetry:<21} {orbit.status}"
     )

@@ -116,20 +116,25 @@ def write_notebook(path: Path, *cells: str) -> Path:
     return path
 
 
-def run_notebook(folder: Path, *cells: str) -> list[str]:
-    """Run code cells in a kernel, without any page, and return what each of them printed."""
-    path = write_notebook(folder / "notebook.ipynb", *cells)
+def execute(path: Path) -> Any:
+    """Run a notebook from top to bottom in its folder, without a page; return what it became."""
     # In a process of its own: its warnings are not ours.
     code = (
         "import sys, nbformat, nbclient;"
         "n = nbformat.read(sys.argv[1], 4);"
-        "nbclient.NotebookClient(n, timeout=60, kernel_name='python3').execute();"
+        "where = {'metadata': {'path': sys.argv[2]}};"
+        "nbclient.NotebookClient(n, timeout=120, kernel_name='python3', resources=where).execute();"
         "nbformat.write(n, sys.argv[1])"
     )
-    command = [sys.executable, "-c", code, str(path)]
-    done = subprocess.run(command, capture_output=True, text=True, timeout=120, check=False)
+    command = [sys.executable, "-c", code, str(path), str(path.parent)]
+    done = subprocess.run(command, capture_output=True, text=True, timeout=200, check=False)
     assert done.returncode == 0, done.stderr
-    run = nbformat.read(path, 4)
+    return nbformat.read(path, 4)
+
+
+def run_notebook(folder: Path, *cells: str) -> list[str]:
+    """Run code cells in a kernel and return what each of them printed."""
+    run = execute(write_notebook(folder / "notebook.ipynb", *cells))
     return ["".join(o.get("text", "") for o in cell.outputs) for cell in run.cells]
 
 
