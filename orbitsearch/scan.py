@@ -169,7 +169,8 @@ def scan(starts: StartSet, p: Array, q: Array, scaled_period: float) -> Scan:
     codes, steps, counts = (np.zeros(n, np.int64) for _ in range(3))
     capacity = max(CAPACITY, int(CAPACITY_RATE * scaled_period))
     kinds = np.zeros((n, capacity), np.int64)
-    when, first, second = (np.empty((n, capacity)) for _ in range(3))
+    # Zeros, not what was in memory before: what no event fills is multiplied along with the rest.
+    when, first, second = (np.zeros((n, capacity)) for _ in range(3))
     # The kernel replaces both: by the time reached, by the least distance seen.
     time, nearest = 0.5 * scaled_period / rate, NEAREST * size
     _kernels.scan(

@@ -9,6 +9,9 @@ from hypothesis import settings
 
 from orbitsearch.cli import main
 
+# Doctests would be looked for in it as in a module of its own, by a name that is taken.
+collect_ignore = ["conftest.py"]
+
 # Machines that run the tests are shared: an example may meet a slow spell, or compile a kernel.
 settings.register_profile("shared machine", deadline=None)
 settings.load_profile("shared machine")

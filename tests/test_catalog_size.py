@@ -68,7 +68,7 @@ def plan(catalog: Catalog, **conditions: object) -> str:
         ({"word": "abAB"}, "orbits_by_cycle (cycle=? AND scaled_period>"),
         ({"stable": True, "start": "rest"}, "orbits_by_period (scaled_period>"),
         ({"status": "verified", "choreography": True}, "orbits_by_period (scaled_period>"),
-        ({"braid": "(LR)^2", "symmetry": "mirror"}, "orbits_by_period (scaled_period>"),
+        ({"braid": "(LR)^3", "symmetry": "mirror"}, "orbits_by_period (scaled_period>"),
     ],
     ids=str,
 )

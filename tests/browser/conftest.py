@@ -12,6 +12,9 @@ from playwright.sync_api import Browser, sync_playwright
 
 from orbitsearch.lab.launch import copy_notebooks
 
+# Doctests would be looked for in it as in a module of its own, by a name that is taken.
+collect_ignore = ["conftest.py"]
+
 # Seconds for one test, after which it fails wherever it hangs; a good run needs a tenth.
 LIMIT = 300
 
