@@ -13,7 +13,6 @@ from bokeh.events import SelectionGeometry, Tap
 from bokeh.models import LayoutDOM
 
 from orbitsearch.catalog import Catalog
-from orbitsearch.describe import orbit_text
 from orbitsearch.errors import BadCatalog, BadRequest
 from orbitsearch.lab.controls import WindowControls
 from orbitsearch.lab.host import Figure
@@ -368,7 +367,11 @@ class SearchPanel(widgets.VBox):
         start = next((s for s in orbit.starts if s.kind == self._map.start), orbit.start)
         self.view.show(start.kind, start.p, start.q)
         self.view.time.value = min(self.view.time.max, max(1.0, orbit.scaled_period))
-        self.message.say(f"orbit {self.table.value}: {orbit_text(orbit).splitlines()[2]}")
+        symmetry = "" if orbit.symmetry is None else f", {orbit.symmetry.title}"
+        self.message.say(
+            f"orbit {self.table.value}: T* = {orbit.scaled_period:.10g}, {orbit.stability.kind}"
+            f"{symmetry}; the verify and browse notebooks show it in full"
+        )
 
     def _select_mark(self) -> None:
         id = self.table.value

@@ -49,7 +49,7 @@ class StartView(widgets.VBox):
         self.message = Message("start")
         self.sliders = [
             widgets.FloatSlider(
-                min=0.0, max=1.0, step=1e-4, readout_format=".6f", style=_WIDE,
+                min=0.0, max=1.0, step=1e-5, readout_format=".6f", style=_WIDE,
                 layout=widgets.Layout(width="420px"), tooltip="this parameter of the start",
             )
             for _ in range(2)

@@ -19,7 +19,7 @@ PICTURES = ROOT / "notebooks" / "pictures"
 # Tall, so that a whole panel is painted; what is below is cut off.
 SIZE = {"width": 1280, "height": 2600}
 SHOWN = {"search": 1650, "verify": 1500, "browse": 1950}
-COLOURS = 96
+COLOURS = 160
 
 
 def fill(notebook: Notebook, name: str, value: object) -> None:
