@@ -9,7 +9,7 @@ from orbitsearch.catalog import Catalog
 from orbitsearch.cli import main
 from orbitsearch.lab import BrowsePanel, SearchPanel, StartView, VerifyPanel
 from orbitsearch.lab.parts import facts
-from orbitsearch.plots.catalog_plots import selected
+from orbitsearch.plots.selection import selected
 
 WAIT = 120.0
 

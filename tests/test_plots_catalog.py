@@ -22,19 +22,16 @@ from orbitsearch.plots.catalog_plots import (
     kinds_figure,
     law_data,
     law_figure,
-    link_selection,
     points_of,
-    select,
-    selected,
     starts_data,
     starts_figure,
 )
 from orbitsearch.plots.page import catalog_page, figure_page
+from orbitsearch.plots.selection import link_selection, select, selected
 from orbitsearch.plots.style import update
 from orbitsearch.plots.window import (
     LAYERS,
     Mark,
-    WindowMap,
     chosen_data,
     map_data,
     marks_data,
@@ -43,6 +40,7 @@ from orbitsearch.plots.window import (
     window_data,
     window_figure,
 )
+from orbitsearch.plots.window_map import LARGEST, WindowMap
 from orbitsearch.records import Kind, Record, StartPoint
 
 CODE = {status: code for code, status in flow.STATUS.items()}
@@ -149,7 +147,7 @@ def test_the_middle_of_a_pixel_is_its_start(grid):
     p, q = (np.linspace(*ends, n) for ends, n in zip(((0.1, 0.4), (0.2, 1.2)), grid, strict=True))
     middle_p = place["x"] + (np.arange(columns) + 0.5) * place["dw"] / columns
     middle_q = place["y"] + (np.arange(rows) + 0.5) * place["dh"] / rows
-    assert max(rows, columns) <= window.LARGEST
+    assert max(rows, columns) <= LARGEST
     np.testing.assert_allclose(middle_p, p[:: seen.stride[0]], rtol=1e-12)
     np.testing.assert_allclose(middle_q, q[:: seen.stride[1]], rtol=1e-12)
 

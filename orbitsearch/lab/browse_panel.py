@@ -21,11 +21,11 @@ from orbitsearch.plots.catalog_plots import (
     law_data,
     law_figure,
     points_of,
-    select,
     starts_data,
     starts_figure,
 )
 from orbitsearch.plots.page import catalog_page, figure_page
+from orbitsearch.plots.selection import select
 from orbitsearch.plots.style import update
 from orbitsearch.records import Kind, Record
 from orbitsearch.starts import START_SETS

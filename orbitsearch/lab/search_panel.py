@@ -32,7 +32,6 @@ from orbitsearch.plots.style import update
 from orbitsearch.plots.window import (
     LAYERS,
     Mark,
-    WindowMap,
     chosen_data,
     map_data,
     marks_data,
@@ -40,6 +39,7 @@ from orbitsearch.plots.window import (
     window_data,
     window_figure,
 )
+from orbitsearch.plots.window_map import WindowMap
 from orbitsearch.runs import Filed, Known, Started, run_search, unfinished
 from orbitsearch.search import Rejected, SearchRequest, TileDone
 

@@ -43,7 +43,8 @@ _MODULES = {
         "starts_figure",
     ),
     "page": ("catalog_page", "figure_page"),
-    "window": ("Outcomes", "WindowMap", "window_data", "window_figure"),
+    "window": ("window_data", "window_figure"),
+    "window_map": ("Outcomes", "WindowMap"),
 }
 _HOMES = {name: module for module, names in _MODULES.items() for name in names}
 

@@ -20,11 +20,11 @@ from orbitsearch.errors import BadRequest
 from orbitsearch.plots.catalog_plots import (
     law_data,
     law_figure,
-    link_selection,
     points_of,
     starts_data,
     starts_figure,
 )
+from orbitsearch.plots.selection import link_selection
 from orbitsearch.records import Record
 
 __all__ = ["SECTIONS", "catalog_page", "figure_page"]
