@@ -59,7 +59,7 @@ def find_near(
     nearly = sorted(
         (residual, time, kind)
         for time, kind, residual in ends(trajectory.events, np.inf)
-        if _scaled(starts, kind, time * rate) <= scaled_period
+        if np.isfinite(residual) and _scaled(starts, kind, time * rate) <= scaled_period
     )
     guesses = [(kind, p, q, time) for _, time, kind in nearly[:TRIED]]
     arcs = shoot_arcs(starts, guesses, reach=reach)
@@ -74,7 +74,7 @@ def find_near(
     message = (
         f"{len(good)} of {len(guesses)} nearly closed arcs close; the nearest moved by {moved:.3g}"
     )
-    if answer.orbit is None or answer.orbit.status is not Status.VERIFIED:
+    if answer.asked_for is None or answer.status is not Status.VERIFIED:
         message = f"{answer.message}; {message}"
     return replace(answer, solution=solution, message=message)
 

@@ -1,15 +1,21 @@
 """Panels of the lab without a browser: what their controls do, and what they say when it fails."""
 
 import json
+from dataclasses import replace
 from pathlib import Path
 
 import pytest
+from bokeh.events import Tap
+from sample_orbits import numbered, pure_braid
 
 from orbitsearch.catalog import Catalog
 from orbitsearch.cli import main
 from orbitsearch.lab import BrowsePanel, SearchPanel, StartView, VerifyPanel
+from orbitsearch.lab.orbit_detail import rows_of
 from orbitsearch.lab.parts import facts
+from orbitsearch.orbit import Start
 from orbitsearch.plots.selection import selected
+from orbitsearch.refine import refine
 
 WAIT = 120.0
 
@@ -56,8 +62,20 @@ def test_a_row_and_a_mark_lead_to_each_other(catalog: Path) -> None:
     panel.table.value = 1
     assert panel._mark_source.selected.indices == [panel._mark_source.data["id"].index(1)]
     assert panel.view.place == pytest.approx((0.34711689, 0.53272495), abs=1e-4)
-    panel._mark_source.selected.indices = [panel._mark_source.data["id"].index(2)]
+    twin = panel._orbits[2].start
+    tap(panel, twin.p, twin.q)
     assert panel.table.value == 2
+    # And again, after another start was followed.
+    tap(panel, 0.32, 0.55)
+    assert panel.view.place == pytest.approx((0.32, 0.55))
+    tap(panel, twin.p, twin.q)
+    assert panel.view.place == pytest.approx((twin.p, twin.q), abs=1e-4)
+
+
+def tap(panel: SearchPanel, x: float, y: float) -> None:
+    """What a click on the map sends."""
+    plot = panel.figure.model.select_one({"name": "window figure"})
+    panel._tap(Tap(plot, x=x, y=y))
 
 
 def test_the_number_fields_and_the_sliders_follow_each_other(tmp_path: Path) -> None:
@@ -66,9 +84,10 @@ def test_the_number_fields_and_the_sliders_follow_each_other(tmp_path: Path) -> 
     assert controls.window[:2] == (0.1, 0.2)
     controls.ends[3].value = 0.25
     assert controls.sliders[1].value == (0.0, 0.25)
-    # Exact numbers are not those of the slider.
-    controls.ends[0].value = 0.1234567
-    assert controls.request().window[0] == 0.1234567
+    # Exact numbers are not those of the slider, and stay when the other one moves.
+    controls.ends[0].value, controls.ends[3].value = 0.1234567, 1.5
+    controls.sliders[1].value = (0.01, 0.3)
+    assert controls.request().window == (0.1234567, 0.2, 0.01, 0.3)
 
 
 @pytest.mark.parametrize("kind", ["isosceles", "rest", "perpendicular", "collinear"])
@@ -78,6 +97,10 @@ def test_every_start_set_has_its_window(tmp_path: Path, kind: str) -> None:
     assert panel.controls.request().start == kind
     assert panel._map.start == kind
     assert panel.view.kind == kind
+    # The middle of the new window, not of one half old and half new.
+    p0, p1, q0, q1 = panel.controls.window
+    if kind != "collinear":
+        assert panel.view.place == pytest.approx(((p0 + p1) / 2, (q0 + q1) / 2), abs=1e-4)
 
 
 def test_a_window_that_is_none_is_told(tmp_path: Path) -> None:
@@ -137,6 +160,31 @@ def test_a_start_is_followed_and_refined(tmp_path: Path) -> None:
     assert "the nearest moved by" in view.message.text
 
 
+def test_what_was_found_is_still_said_when_it_is_shown(tmp_path: Path) -> None:
+    panel = SearchPanel(tmp_path / "orbits.db")
+    panel.view.show("collinear", 0.347, 0.533)
+    panel.view.refine.click()
+    finish(panel.view)
+    assert "the nearest moved by" in panel.view.message.text
+
+
+def test_a_panel_listens_again_after_something_went_wrong(catalog: Path, monkeypatch) -> None:
+    panel = BrowsePanel(catalog)
+    finish(panel)
+
+    def broken(records):
+        raise RuntimeError("broken")
+
+    with monkeypatch.context() as patch:
+        patch.setattr("orbitsearch.lab.browse_panel.law_data", broken)
+        panel.symmetry.value = "choreography"
+        assert "this is a bug: RuntimeError: broken" in panel.message.text
+    panel.symmetry.value = "any"
+    assert panel.message.text == "2 of 2 orbits"
+    panel.orbits.value = 2
+    assert panel.detail.orbit is not None
+
+
 def test_starts_that_fly_apart_collide_or_are_none_are_told() -> None:
     view = StartView()
     view.show("collinear", 0.9, 0.9)
@@ -192,7 +240,9 @@ def test_a_pasted_row_is_refined_and_kept_with_its_note(catalog: Path) -> None:
 @pytest.mark.parametrize(
     ("row", "said"),
     [
-        ("collinear, x, 1, 2", "`a` must be a number, got ''"),
+        ("collinear, x, 1, 2", "must be"),
+        (",,,", "`table row` must have a start set, two numbers and a period"),
+        ("circular 0.1 0.2 3", "`start` must be one of collinear, isosceles"),
         ("collinear 0.9 0.9 5", "must be bound, E < 0"),
         ("", "`a` must be a number, got ''"),
     ],
@@ -200,11 +250,37 @@ def test_a_pasted_row_is_refined_and_kept_with_its_note(catalog: Path) -> None:
 def test_a_bad_guess_is_told(catalog: Path, row: str, said: str) -> None:
     panel = VerifyPanel(catalog)
     panel.pasted.value = row
-    panel.refine.click()
+    if said not in panel.message.text:
+        panel.refine.click()
     if panel._worker is not None:
         finish(panel)
     assert said in panel.message.text
     assert panel.keep.disabled
+
+
+def test_a_row_is_pasted_in_any_shape(catalog: Path) -> None:
+    panel = VerifyPanel(catalog)
+    for row in ("Collinear, 0.3 0.5 6", "collinear;0.3;0.5;6", "collinear\t0.3\t0.5\t6"):
+        panel.pasted.value = row
+        assert [field.value for field in panel.values] == ["0.3", "0.5", "6"]
+        panel.set_guess(Start("rest", ("0", "0"), "0"))
+
+
+def test_a_new_record_is_kept_from_refining_only(catalog: Path) -> None:
+    panel = VerifyPanel(catalog)
+    # M. Suvakov & V. Dmitrasinovic, PRL 110, 114301 (2013), refined.
+    orbit = refine("collinear", 0.46444, 0.39606, 14.8939).orbit
+    panel.set_guess(orbit.start)
+    panel.as_given.click()
+    finish(panel)
+    panel.keep.click()
+    assert "press Refine first" in panel.message.text
+    panel.refine.click()
+    finish(panel)
+    panel.keep.click()
+    assert panel.message.text == "filed as orbit 3"
+    with Catalog.open(catalog) as filed:
+        assert len(filed.get(3).orbit.starts) == 2
 
 
 def test_numbers_as_given_may_fail(catalog: Path) -> None:
@@ -259,6 +335,25 @@ def test_list_and_plots_select_the_same_orbit(browse: BrowsePanel) -> None:
     assert selected(browse.starts.model) == [1]
 
 
+def test_a_selection_of_what_is_gone_is_left_alone(browse: BrowsePanel) -> None:
+    source = browse.law.model.select_one({"name": "law orbits"})
+    browse._pick(source, [57])
+    assert browse.orbits.value is None
+    assert "bug" not in browse.message.text
+
+
+def test_a_refresh_keeps_the_type_that_was_chosen(browse: BrowsePanel, catalog: Path) -> None:
+    browse.kinds.value = 0
+    chosen = browse._kinds[0].braid
+    with Catalog.open(catalog) as filed:
+        # A type with a shorter period comes first in the list.
+        filed.add(replace(numbered(5), scaled_period=1.0, braid=pure_braid(40)))
+    browse.refresh.click()
+    finish(browse)
+    assert browse._kinds[browse.kinds.value].braid == chosen
+    assert browse.kinds.value == 1
+
+
 def test_what_others_added_is_seen_after_a_refresh(browse: BrowsePanel, catalog: Path) -> None:
     verify = VerifyPanel(catalog)
     verify.pasted.value = "collinear 0.46444 0.39606 14.8939"
@@ -291,10 +386,20 @@ def test_an_empty_catalogue_says_what_to_do(tmp_path: Path) -> None:
     assert not (tmp_path / "none.db").exists()
 
 
-def test_a_copied_number_is_whole_and_safe_in_a_page() -> None:
-    text = facts([("word", "a" * 500, True), ("note", '<b>"quoted"</b>', False)])
+def test_numbers_are_copied_in_full() -> None:
+    orbit = replace(numbered(3), word="ab" * 400, starts=(numbered(3).start,))
+    copied = {name: text for name, _, text in rows_of(orbit) if text}
+    assert copied["word"] == "ab" * 400
+    assert copied["period T"] == orbit.start.period
+    assert copied["syzygy cycle"] == orbit.cycle
+    assert copied["start"] == " ".join([orbit.start.kind, *orbit.start.parameters])
+
+
+def test_a_table_of_facts_is_safe_in_a_page() -> None:
+    text = facts([("word", "a...", "a" * 500), ("note", '<b>"quoted"</b>', "")])
     assert f'data-text="{"a" * 500}"' in text
     assert "<b>" not in text
+    assert text.count("<button") == 1
 
 
 def test_figure_command_writes_a_page(catalog: Path, tmp_path: Path, capsys) -> None:

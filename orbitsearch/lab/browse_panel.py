@@ -16,7 +16,7 @@ from orbitsearch.errors import BadRequest, OrbitsearchError
 from orbitsearch.lab.host import Figure
 from orbitsearch.lab.loop import Worker
 from orbitsearch.lab.orbit_detail import OrbitDetail
-from orbitsearch.lab.parts import STYLE, Message, answered, button, choice_list, heading
+from orbitsearch.lab.parts import STYLE, Message, answered, button, choice_list, heading, quiet
 from orbitsearch.plots.catalog_plots import (
     law_data,
     law_figure,
@@ -100,7 +100,8 @@ class BrowsePanel(widgets.VBox):
         self.source = choice("published", [ANY, "matched", "not matched"], "matched to a table row")
         self.word = widgets.Text(
             description="word has", style=_WIDE, layout=widgets.Layout(width="250px"),
-            placeholder="abAB", tooltip="letters that the free-group word contains",
+            placeholder="abAB", continuous_update=False,
+            tooltip="letters that the free-group word contains",
         )  # fmt: skip
         self.periods = widgets.FloatRangeSlider(
             value=(0.0, 100.0), min=0.0, max=100.0, step=0.5, description="T*", style=_WIDE,
@@ -185,19 +186,22 @@ class BrowsePanel(widgets.VBox):
 
     @answered
     def _take(self, found: list[_Read]) -> None:
+        chosen = None if self.kinds.value is None else self._kinds[self.kinds.value].braid
         records, self._kinds, self._types = found[-1]
         self._records = {record.id: record for record in records}
         longest = max((record.orbit.scaled_period for record in records), default=99.0)
-        self._listening = False
         whole = self.periods.value[1] >= self.periods.max
-        self.periods.max = float(int(longest) + 1)
-        if whole:
-            self.periods.value = (self.periods.value[0], self.periods.max)
-        chosen = self.kinds.value
         every = (f"all types ({len(records)} orbits)", None)
-        self.kinds.options = [every, *((_kind_row(kind), n) for n, kind in enumerate(self._kinds))]
-        self.kinds.value = chosen if chosen is not None and chosen < len(self._kinds) else None
-        self._listening = True
+        with quiet(self):
+            self.periods.max = float(int(longest) + 1)
+            if whole:
+                self.periods.value = (self.periods.value[0], self.periods.max)
+            rows = ((_kind_row(kind), n) for n, kind in enumerate(self._kinds))
+            self.kinds.options = [every, *rows]
+            # The same type, wherever it stands now.
+            self.kinds.value = next(
+                (n for n, kind in enumerate(self._kinds) if kind.braid == chosen), None
+            )
         self._filter()
 
     # ------------------------------------------------------------ filters
@@ -232,12 +236,11 @@ class BrowsePanel(widgets.VBox):
         if not self._listening:
             return
         records = self.listed
-        self._listening = False
         chosen = self.orbits.value
         shown = records[:LISTED]
-        self.orbits.options = [(_orbit_row(record), record.id) for record in shown]
-        self.orbits.value = chosen if any(r.id == chosen for r in shown) else None
-        self._listening = True
+        with quiet(self):
+            self.orbits.options = [(_orbit_row(record), record.id) for record in shown]
+            self.orbits.value = chosen if any(r.id == chosen for r in shown) else None
         if not self._records:
             self.message.say(
                 f"no orbits in {self.path} yet: run a search, or keep one from the verify notebook"
@@ -245,25 +248,25 @@ class BrowsePanel(widgets.VBox):
         else:
             more = f", the first {LISTED} are listed" if len(records) > LISTED else ""
             self.message.say(f"{len(records)} of {len(self._records)} orbits{more}")
-        self._draw()
+        self._draw(records)
 
     @answered
-    def _draw(self) -> None:
-        records = self.listed
+    def _draw(self, records: list[Record] | None = None) -> None:
+        records = self.listed if records is None else records
         kind = self.shown_set.value
         stable = [record.id for record in records if record.orbit.stability.stable]
-        self._listening = False
-        update(self.law.model, law_data(records))
-        update(self.starts.model, starts_data(points_of(records, kind), kind, stable))
+        with quiet(self):
+            update(self.law.model, law_data(records))
+            update(self.starts.model, starts_data(points_of(records, kind), kind, stable))
         self._select(self.orbits.value)
-        self._listening = True
 
     # ------------------------------------------------------------ choosing
 
     @answered
     def _pick(self, source: Any, indices: list[int]) -> None:
         """Something was selected in a plot."""
-        if not self._listening or not indices:
+        # A tap may come after what it was on has been filtered away.
+        if not self._listening or not indices or indices[0] >= len(source.data["id"]):
             return
         id = int(source.data["id"][indices[0]])
         if any(value == id for _, value in self.orbits.options):
@@ -281,10 +284,9 @@ class BrowsePanel(widgets.VBox):
 
     def _select(self, id: int | None) -> None:
         """Mark an orbit in both plots, without listening to what they answer."""
-        before, self._listening = self._listening, False
-        for figure in (self.law, self.starts):
-            select(figure.model, [] if id is None else [id])
-        self._listening = before
+        with quiet(self):
+            for figure in (self.law, self.starts):
+                select(figure.model, [] if id is None else [id])
 
     def _show(self, id: int) -> None:
         self.detail.show(self._records[id].orbit, record_text(self._records[id]).splitlines()[0])
@@ -305,8 +307,8 @@ class BrowsePanel(widgets.VBox):
         path = Path(f"{self.name.value.strip() or 'selection'}.{ending}")
         try:
             path.write_text(write[ending](records), encoding="utf-8")
-        except OSError as problem:
-            raise OrbitsearchError(f"`file name`: {path}: {problem.strerror}") from None
+        except (OSError, ValueError) as problem:
+            raise OrbitsearchError(f"`file name`: {path}: {problem}; choose another") from None
         self.message.say(f"{len(records)} orbits written to {path.resolve()}", "done")
 
     @staticmethod

@@ -2,9 +2,12 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+
 import ipywidgets as widgets
 
 from orbitsearch.lab.loop import on_kernel_loop
+from orbitsearch.lab.parts import quiet
 from orbitsearch.search import SearchRequest
 from orbitsearch.starts import START_SETS, start_set
 from orbitsearch.workers import check_workers
@@ -25,9 +28,15 @@ _WIDE = {"description_width": "90px"}
 
 
 class WindowControls(widgets.VBox):
-    """Controls for a `SearchRequest`; sliders and number fields follow each other."""
+    """Controls for a `SearchRequest`; sliders and number fields follow each other.
 
-    def __init__(self) -> None:
+    Parameters
+    ----------
+    on_change : callable
+        Called once after each change of start set or window.
+    """
+
+    def __init__(self, on_change: Callable[[], object] = lambda: None) -> None:
         self.start = widgets.Dropdown(
             options=list(START_SETS), description="start set", style=_WIDE,
             tooltip="what the starts have in common",
@@ -61,10 +70,11 @@ class WindowControls(widgets.VBox):
         )  # fmt: skip
         for slider, name in zip(self.sliders, ("first", "second"), strict=True):
             slider.add_class(f"lab-slider-{name}")
-        self._following = False
+        self._listening = True
+        self._on_change = on_change
         self.start.observe(lambda _: self._take_set(), "value")
-        for slider in self.sliders:
-            slider.observe(lambda _: self._follow_sliders(), "value")
+        for k, slider in enumerate(self.sliders):
+            slider.observe(lambda _, k=k: self._follow_slider(k), "value")
         for end in self.ends:
             end.observe(lambda _: self._follow_ends(), "value")
         self._take_set()
@@ -83,10 +93,9 @@ class WindowControls(widgets.VBox):
 
     def set_window(self, window: Window) -> None:
         """Put a window into fields and sliders."""
-        self._following = True
-        for end, value in zip(self.ends, window, strict=True):
-            end.value = float(f"{value:.10g}")
-        self._following = False
+        with quiet(self):
+            for end, value in zip(self.ends, window, strict=True):
+                end.value = float(f"{value:.10g}")
         self._follow_ends()
 
     def request(self) -> SearchRequest:
@@ -97,32 +106,34 @@ class WindowControls(widgets.VBox):
     @on_kernel_loop
     def _take_set(self) -> None:
         starts, reach = start_set(self.start.value), _REACH[self.start.value]
-        for k, slider in enumerate(self.sliders):
-            slider.description = starts.letters[k]
-            low, high = reach[2 * k : 2 * k + 2]
-            # Never a minimum above the maximum, not even between two assignments.
-            slider.min, slider.max = min(slider.min, low), max(slider.max, high)
-            slider.value = starts.window[2 * k : 2 * k + 2]
-            slider.min, slider.max = low, high
+        with quiet(self):
+            for k, slider in enumerate(self.sliders):
+                slider.description = starts.letters[k]
+                low, high = reach[2 * k : 2 * k + 2]
+                # Never a minimum above the maximum, not even between two assignments.
+                slider.min, slider.max = min(slider.min, low), max(slider.max, high)
+                slider.value = starts.window[2 * k : 2 * k + 2]
+                slider.min, slider.max = low, high
         self.set_window(starts.window)
 
     @on_kernel_loop
-    def _follow_sliders(self) -> None:
-        if self._following:
+    def _follow_slider(self, k: int) -> None:
+        if not self._listening:
             return
-        self._following = True
-        for k, slider in enumerate(self.sliders):
-            for end, value in zip(self.ends[2 * k : 2 * k + 2], slider.value, strict=True):
+        with quiet(self):
+            # Its own two fields: the others may hold exact numbers.
+            ends = self.ends[2 * k : 2 * k + 2]
+            for end, value in zip(ends, self.sliders[k].value, strict=True):
                 end.value = float(f"{value:.10g}")
-        self._following = False
+        self._on_change()
 
     @on_kernel_loop
     def _follow_ends(self) -> None:
-        if self._following:
+        if not self._listening:
             return
-        self._following = True
         a, b, c, d = self.window
-        for slider, (low, high) in zip(self.sliders, ((a, b), (c, d)), strict=True):
-            if slider.min <= low <= high <= slider.max:
-                slider.value = (low, high)
-        self._following = False
+        with quiet(self):
+            for slider, (low, high) in zip(self.sliders, ((a, b), (c, d)), strict=True):
+                if slider.min <= low <= high <= slider.max:
+                    slider.value = (low, high)
+        self._on_change()

@@ -19,8 +19,6 @@ from orbitsearch.plots import (
 
 __all__ = ["OrbitDetail", "rows_of"]
 
-# Names after which a number stands that others have to reproduce.
-_COPIED = ("start", "period T", "scale-free T*", "energy", "word", "syzygy cycle", "Artin word")
 # A column of names, and what belongs to them, in the text of an orbit.
 _NAMES = 18
 
@@ -43,8 +41,9 @@ class OrbitDetail(widgets.VBox):
         """Show an orbit, or nothing."""
         self.orbit = orbit
         self.message.say(title)
-        self.numbers.value = "" if orbit is None else facts(rows_of(orbit_text(orbit)))
-        self._place.layout.display = "none" if orbit is None else ""
+        self.numbers.value = "" if orbit is None else facts(rows_of(orbit))
+        # Not the former orbit's figures beside these numbers, should this one have none.
+        self._place.layout.display = "none"
         if orbit is None:
             return
         motion = motion_of(orbit)
@@ -56,15 +55,28 @@ class OrbitDetail(widgets.VBox):
                 Figure(alignments_figure(data[1])),
             ]
             self._place.children = self._figures
-            return
-        for figure, one in zip(self._figures, data, strict=True):
-            update(figure.model, one)
+        else:
+            for figure, one in zip(self._figures, data, strict=True):
+                update(figure.model, one)
+        self._place.layout.display = ""
 
 
-def rows_of(text: str) -> list[tuple[str, str, bool]]:
-    """Names and values of an orbit's text, without its verdict, and whether to copy them."""
+def rows_of(orbit: Orbit) -> list[tuple[str, str, str]]:
+    """Names and values of everything about an orbit but its verdict, and what copying gives."""
+    start = orbit.start
+    whole = {
+        "start": " ".join([start.kind, *start.parameters]),
+        "period T": start.period,
+        "scale-free T*": repr(orbit.scaled_period),
+        "energy": repr(orbit.energy),
+        "word": orbit.word,
+        "syzygy cycle": orbit.cycle,
+    }
+    if orbit.braid is not None:
+        whole["Artin word"] = " ".join(map(str, orbit.braid.braid.artin))
     rows = []
-    for line in text.split("\nverdict:", maxsplit=1)[0].splitlines():
+    for line in orbit_text(orbit).split("\nverdict:")[0].splitlines():
         name, value = line[:_NAMES].strip().removesuffix(":"), line[_NAMES:].strip()
-        rows.append((name, value, name in _COPIED or name.startswith("also")))
+        also = value.replace(", T =", "") if name.startswith("also") else ""
+        rows.append((name, value, whole.get(name, also)))
     return rows

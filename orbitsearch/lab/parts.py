@@ -4,7 +4,8 @@ from __future__ import annotations
 
 import functools
 import html
-from collections.abc import Callable, Iterable
+from collections.abc import Callable, Iterable, Iterator
+from contextlib import contextmanager
 from typing import Any
 
 import ipywidgets as widgets
@@ -12,7 +13,16 @@ import ipywidgets as widgets
 from orbitsearch.errors import OrbitsearchError
 from orbitsearch.lab.loop import on_kernel_loop
 
-__all__ = ["Message", "answered", "button", "choice_list", "facts", "heading", "shown_number"]
+__all__ = [
+    "Message",
+    "answered",
+    "button",
+    "choice_list",
+    "facts",
+    "heading",
+    "quiet",
+    "shown_number",
+]
 
 # Colours that reach contrast 4:1 on white and on #111111, and a word that says the same.
 _LOOKS = {"": ("#777777", ""), "done": ("#0d8a60", ""), "wrong": ("#c8553d", "Not done: ")}
@@ -54,6 +64,17 @@ def answered(method: Callable[..., Any]) -> Callable[..., None]:
     return on_kernel_loop(call)
 
 
+@contextmanager
+def quiet(panel: Any) -> Iterator[None]:
+    """What is changed inside is not listened to by a panel's `_listening` callbacks; it nests."""
+    before, panel._listening = panel._listening, False
+    try:
+        yield
+    finally:
+        # Also after an exception: a panel that has stopped listening is dead.
+        panel._listening = before
+
+
 def button(text: str, description: str, act: Callable[[Any], Any], icon: str = "") -> Any:
     """Button that says on hover what it does."""
     one = widgets.Button(description=text, tooltip=description, icon=icon)
@@ -93,12 +114,12 @@ _COPY = (
 )
 
 
-def facts(rows: Iterable[tuple[str, str, bool]]) -> str:
-    """HTML table of names and values; those marked with True can be copied in full."""
+def facts(rows: Iterable[tuple[str, str, str]]) -> str:
+    """HTML table of names, values, and what a button copies of each, if anything."""
     lines = []
     for name, value, copied in rows:
-        text = html.escape(value, quote=True)
-        shown = text if len(value) <= 160 else html.escape(f"{value[:150]}... ({len(value)})")
+        text = html.escape(copied, quote=True)
+        shown = html.escape(value if len(value) <= 260 else f"{value[:250]}... ({len(value)})")
         knob = (
             f' <button class="lab-copy" data-text="{text}" aria-label="copy {html.escape(name)}"'
             f' onclick="{_COPY}">copy</button>'

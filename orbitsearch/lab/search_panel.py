@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import html
 import time
 from collections import Counter
 from collections.abc import Iterator
@@ -13,7 +14,7 @@ from bokeh.events import SelectionGeometry, Tap
 from bokeh.models import LayoutDOM
 
 from orbitsearch.catalog import Catalog
-from orbitsearch.errors import BadCatalog, BadRequest
+from orbitsearch.errors import BadRequest, OrbitsearchError
 from orbitsearch.lab.controls import WindowControls
 from orbitsearch.lab.host import Figure
 from orbitsearch.lab.loop import Worker
@@ -24,6 +25,7 @@ from orbitsearch.lab.parts import (
     button,
     choice_list,
     heading,
+    quiet,
     shown_number,
 )
 from orbitsearch.lab.start_view import StartView
@@ -47,6 +49,8 @@ __all__ = ["SearchPanel"]
 
 # A tap means a mark within this share of the shown ranges: about half its size on the screen.
 MARK = 60.0
+# Longer lists are slow to draw; Browse has filters for them.
+LISTED = 500
 
 
 class SearchPanel(widgets.VBox):
@@ -61,7 +65,7 @@ class SearchPanel(widgets.VBox):
     def __init__(self, catalog: str | Path = "catalog/orbits.db") -> None:
         self.path = Path(catalog)
         self.message = Message("search")
-        self.controls = WindowControls()
+        self.controls = WindowControls(self._new_window)
         self.start = button("Start", "search this window", lambda _: self._begin())
         self.stop = button("Stop", "stop; what was found is kept", lambda _: self._halt())
         self.resume = button("Resume", "go on where a search stopped", lambda _: self._go_on())
@@ -77,7 +81,8 @@ class SearchPanel(widgets.VBox):
         self.table.add_class("lab-run-table")
         self.view = StartView(on_orbit=self._meet, on_start=self._mark)
         self._map = self._blank(self.controls.request())
-        self._marks: dict[int | None, list[Mark]] = {}
+        self._states: dict[int, str] = {}
+        self._rejected: list[Mark] = []
         self._orbits: dict[int, Orbit] = {}
         self._listening = True
         self.figure = Figure(self._listening_map())
@@ -114,14 +119,8 @@ class SearchPanel(widgets.VBox):
         return layout
 
     def _listen(self) -> None:
-        self._mark_source.selected.on_change(
-            "indices",
-            lambda attr, old, new: self._choose_mark(),  # noqa: ARG005
-        )
         self.layer.observe(lambda _: self._redraw(), "value")
         self.table.observe(lambda _: self._choose_row(), "value")
-        for control in (self.controls.start, *self.controls.ends):
-            control.observe(lambda _: self._new_window(), "value")
 
     @property
     def _mark_source(self) -> Any:
@@ -144,6 +143,8 @@ class SearchPanel(widgets.VBox):
 
     @answered
     def _go_on(self) -> None:
+        if self.running:
+            return
         run = self._stopped_run()
         if run is None:
             raise BadRequest("no search of this catalogue was stopped: start one")
@@ -159,20 +160,24 @@ class SearchPanel(widgets.VBox):
         if self.running:
             return
         self._map = self._blank(request)
-        self._marks, self._orbits = {}, {}
+        self._orbits, self._states, self._rejected = {}, {}, []
         self._counts: Counter[str] = Counter()
         self._new, self._known, self._done = set[int](), set[int](), 0
         self._began = time.monotonic()
         self.view.bound = request.scaled_period
         self.progress.max, self.progress.value = request.tiles, 0
-        update(self.figure.model, window_data(self._map, self.layer.value, (), self.view.place))
+        self._show_window()
         self._list()
         self.message.say("starting; the first time the kernels are compiled, which takes a minute")
         workers = int(self.controls.workers.value)
 
         def work() -> Iterator[Any]:
             with Catalog.open(self.path) as catalog:
-                yield from run_search(catalog, request, workers=workers, resume=resume)
+                for event in run_search(catalog, request, workers=workers, resume=resume):
+                    if isinstance(event, Known):
+                        # Read here: the kernel's loop has better things to do.
+                        event = Filed(catalog.get(event.id).orbit, event.id, False)
+                    yield event
 
         self._worker = Worker(work, self._take, self._fail, self._end)
         self._worker.start()
@@ -180,7 +185,7 @@ class SearchPanel(widgets.VBox):
 
     @answered
     def _halt(self) -> None:
-        if self._worker is not None:
+        if self._worker is not None and self.running:
             self._worker.stop()
             self.message.say("stopping")
 
@@ -190,7 +195,7 @@ class SearchPanel(widgets.VBox):
             self._take_one(event)
         if any(isinstance(event, TileDone) for event in events):
             update(self.figure.model, map_data(self._map, self.layer.value))
-        if any(isinstance(event, Filed | Known | Rejected) for event in events):
+        if any(isinstance(event, Filed | Rejected) for event in events):
             self._draw_marks()
             self._list()
         self._tell()
@@ -199,7 +204,8 @@ class SearchPanel(widgets.VBox):
         if isinstance(event, Started):
             self.progress.value = event.done
             before = f"; the map shows what follows the {event.done} tiles of before"
-            self.message.say(f"searching{before if event.done else ''}")
+            if self._worker is None or not self._worker.stopping:
+                self.message.say(f"searching{before if event.done else ''}")
         elif isinstance(event, TileDone):
             self._done += 1
             self.progress.value += 1
@@ -207,27 +213,17 @@ class SearchPanel(widgets.VBox):
             outcomes = event.outcomes
             self._map.fill(outcomes.rows[0], outcomes.columns[0], outcomes)
         elif isinstance(event, Filed):
-            (self._new if event.new else self._known).add(event.id)
-            self._add_orbit(event.id, event.orbit, "new" if event.new else "known")
-        elif isinstance(event, Known):
-            self._known.add(event.id)
-            if event.id not in self._orbits:
-                with Catalog.open(self.path) as catalog:
-                    self._add_orbit(event.id, catalog.get(event.id).orbit, "known")
+            if event.id not in self._new:
+                (self._new if event.new else self._known).add(event.id)
+            self._add_orbit(event.id, event.orbit, "new" if event.id in self._new else "known")
         elif isinstance(event, Rejected):
             self._counts[f"rejected: {event.verdict.reason.split(' is ')[0]}"] += 1
-            mark = Mark(event.start.p, event.start.q, "rejected")
-            self._marks.setdefault(None, []).append(mark)
+            self._rejected.append(Mark(event.start.p, event.start.q, "rejected"))
 
     def _add_orbit(self, id: int, orbit: Orbit, state: str) -> None:
         self._orbits[id] = orbit
-        if orbit.status is Status.NOT_CONFIRMED:
-            state = "not confirmed"
-        self._marks[id] = [
-            Mark(start.p, start.q, state, id, orbit.scaled_period, orbit.word)
-            for start in orbit.starts or (orbit.start,)
-            if start.kind == self._map.start
-        ]
+        unsure = orbit.status is Status.NOT_CONFIRMED
+        self._states[id] = "not confirmed" if unsure else state
 
     def _fail(self, text: str) -> None:
         self.message.say(text, "wrong")
@@ -239,12 +235,15 @@ class SearchPanel(widgets.VBox):
         if self._worker.error is None:
             stopped = self.progress.value < self.progress.max or self._worker.stopping
             self.message.say(f"{'stopped' if stopped else 'finished'}: {found}", "done")
+        self._list()
         self._rest()
         self._look_for_stopped()
 
     def _rest(self) -> None:
         self.start.disabled = self.running
         self.stop.disabled = not self.running
+        if self.running:
+            self.resume.disabled = True
 
     def _stopped_run(self) -> Any:
         """The last search of the catalogue that can be gone on with."""
@@ -257,18 +256,25 @@ class SearchPanel(widgets.VBox):
     def _look_for_stopped(self) -> None:
         try:
             run = None if self.running else self._stopped_run()
-        except BadCatalog as problem:
+        except (OrbitsearchError, OSError) as problem:
             self.message.say(str(problem), "wrong")
             run = None
         self.resume.disabled = run is None
         self.resume.description = "Resume" if run is None else f"Resume run {run.id}"
+        # A killed run says it is running, and so does one that another notebook is at.
+        doubt = run is not None and run.state == "running"
+        self.resume.tooltip = (
+            "go on where a search stopped; another notebook may still be at this one"
+            if doubt
+            else "go on where a search stopped"
+        )
 
     # ------------------------------------------------------------ what is shown
 
     def _tell(self) -> None:
         passed = time.monotonic() - self._began
         to_do = self.progress.max - self.progress.value
-        left = f", about {passed / max(self._done, 1) * to_do:.0f} s left" if to_do else ""
+        left = f", about {passed / self._done * to_do:.0f} s left" if to_do and self._done else ""
         parts = [
             f"{self.progress.value} of {self.progress.max} tiles{left}",
             f"{self._counts['starts']:,} starts, {self._counts['candidates']:,} candidates",
@@ -279,25 +285,33 @@ class SearchPanel(widgets.VBox):
                 if reason.startswith("rejected")
             ),
         ]
-        self.tells.value = f'{STYLE}<div class="lab-tells">{"; ".join(parts)}</div>'
+        self.tells.value = f'{STYLE}<div class="lab-tells">{html.escape("; ".join(parts))}</div>'
 
     def _list(self) -> None:
         """Rows of the table, the chosen one kept."""
-        self._listening = False
         chosen = self.table.value
-        orbits = sorted(self._orbits.items(), key=lambda item: item[1].scaled_period)
-        self.table.options = [(_row(id, orbit), id) for id, orbit in orbits]
-        self.table.value = chosen if chosen in self._orbits else None
-        self._listening = True
+        orbits = [*self._orbits.items()]
+        if not self.running:
+            # Not while it grows: rows would move away under the pointer.
+            orbits.sort(key=lambda item: item[1].scaled_period)
+        with quiet(self):
+            self.table.options = [(_row(id, orbit), id) for id, orbit in orbits[:LISTED]]
+            shown = {id for id, _ in orbits[:LISTED]}
+            self.table.value = chosen if chosen in shown else None
 
     def _all_marks(self) -> list[Mark]:
-        return [mark for marks in self._marks.values() for mark in marks]
+        """Every start of the shown set, of orbits and of what was rejected."""
+        found = [
+            Mark(start.p, start.q, self._states[id], id, orbit.scaled_period, orbit.word)
+            for id, orbit in self._orbits.items()
+            for start in orbit.starts or (orbit.start,)
+            if start.kind == self._map.start
+        ]
+        return found + self._rejected
 
     def _draw_marks(self) -> None:
-        self._listening = False
         update(self.figure.model, marks_data(self._all_marks()))
         self._select_mark()
-        self._listening = True
 
     @answered
     def _redraw(self) -> None:
@@ -306,7 +320,8 @@ class SearchPanel(widgets.VBox):
     @answered
     def _new_window(self) -> None:
         """Show the window that is asked for, while no search fills the map."""
-        if self.running:
+        # The controls tell of their first window while the rest is still being made.
+        if not hasattr(self, "figure") or self.running:
             return
         try:
             request = self.controls.request()
@@ -315,30 +330,47 @@ class SearchPanel(widgets.VBox):
             self.message.say(str(problem))
             return
         self.message.say("")
+        self.view.bound = request.scaled_period
         if (request.start, request.window) == (self._map.start, self._map.window):
             return
         self._map = self._blank(request)
+        self._rejected = []
         if self.view.kind != request.start:
             p0, p1, q0, q1 = request.window
             self.view.show(request.start, 0.5 * (p0 + p1), 0.5 * (q0 + q1))
-        self._marks = {}
-        update(self.figure.model, window_data(self._map, self.layer.value, (), self.view.place))
+        self._show_window()
+
+    def _show_window(self) -> None:
+        """Draw the map anew, its ranges included."""
+        here = self.view.place if self.view.kind == self._map.start else None
+        data = window_data(self._map, self.layer.value, self._all_marks(), here)
+        update(self.figure.model, data)
+        self._select_mark()
 
     def _mark(self, p: float, q: float) -> None:
+        """Put the cross where the start is, if it is one of this map."""
         if hasattr(self, "figure"):
-            update(self.figure.model, chosen_data((p, q)))
+            here = (p, q) if self.view.kind == self._map.start else None
+            update(self.figure.model, chosen_data(here))
 
     # ------------------------------------------------------------ what is chosen
 
     @answered
     def _tap(self, event: Any) -> None:
-        """Follow the start under the pointer, unless a mark was meant."""
-        # Not by the selection: that may come after the tap, and be the one before it.
-        plot = event.model
+        """Choose the orbit under the pointer, or follow the start that is there."""
+        # By place, not by what the page has selected: that comes apart from the tap, and by numbers
+        # that a running search may have changed meanwhile.
+        plot, marks = event.model, self._all_marks()
         reach = [(one.end - one.start) / MARK for one in (plot.x_range, plot.y_range)]
-        if nearest_mark(self._all_marks(), event.x, event.y, (reach[0], reach[1])) is not None:
-            return
-        self.view.show(self._map.start, max(0.0, event.x), max(0.0, event.y))
+        nearest = nearest_mark(marks, event.x, event.y, (reach[0], reach[1]))
+        if nearest is None:
+            self.view.show(self._map.start, max(0.0, event.x), max(0.0, event.y))
+        elif (id := marks[nearest].id) is None:
+            self.view.show(self._map.start, marks[nearest].p, marks[nearest].q)
+        elif self.table.value != id and any(value == id for _, value in self.table.options):
+            self.table.value = id
+        else:
+            self._show_orbit(id)
 
     @answered
     def _box(self, event: Any) -> None:
@@ -351,26 +383,21 @@ class SearchPanel(widgets.VBox):
         self.controls.set_window((p0, p1, q0, q1))
 
     @answered
-    def _choose_mark(self) -> None:
-        if not self._listening:
-            return
-        chosen = [self._all_marks()[i] for i in self._mark_source.selected.indices]
-        if chosen and chosen[0].id is not None:
-            self.table.value = chosen[0].id
-
-    @answered
     def _choose_row(self) -> None:
-        if not self._listening or self.table.value is None:
-            return
-        orbit = self._orbits[self.table.value]
+        if self._listening and self.table.value is not None:
+            self._show_orbit(self.table.value)
+
+    def _show_orbit(self, id: int) -> None:
+        """Follow an orbit from its start on this map, and say what it is."""
+        orbit = self._orbits[id]
         self._select_mark()
         start = next((s for s in orbit.starts if s.kind == self._map.start), orbit.start)
         self.view.show(start.kind, start.p, start.q)
         self.view.time.value = min(self.view.time.max, max(1.0, orbit.scaled_period))
         symmetry = "" if orbit.symmetry is None else f", {orbit.symmetry.title}"
         self.message.say(
-            f"orbit {self.table.value}: T* = {orbit.scaled_period:.10g}, {orbit.stability.kind}"
-            f"{symmetry}; the verify and browse notebooks show it in full"
+            f"orbit {id}: T* = {orbit.scaled_period:.10g}, {orbit.stability.kind}{symmetry};"
+            " the verify and browse notebooks show it in full"
         )
 
     def _select_mark(self) -> None:

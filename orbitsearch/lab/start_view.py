@@ -10,11 +10,12 @@ import numpy as np
 from orbitsearch.errors import BadRequest
 from orbitsearch.lab.host import Figure
 from orbitsearch.lab.loop import Worker
-from orbitsearch.lab.parts import Message, answered, button, heading
+from orbitsearch.lab.parts import Message, answered, button, heading, quiet
 from orbitsearch.nearby import find_near
 from orbitsearch.orbit import Orbit, Status
 from orbitsearch.period import motion_from
 from orbitsearch.plots import orbit_data, orbit_figure, update
+from orbitsearch.refine import Refinement
 from orbitsearch.starts import start_set
 from orbitsearch.syzygies import syzygies
 
@@ -45,7 +46,7 @@ class StartView(widgets.VBox):
         self.kind = "collinear"
         self.bound = 30.0
         self._on_orbit, self._on_start = on_orbit, on_start
-        self._busy = False
+        self._listening = True
         self.message = Message("start")
         self.sliders = [
             widgets.FloatSlider(
@@ -77,12 +78,11 @@ class StartView(widgets.VBox):
         starts = start_set(kind)
         self.kind = kind
         # The picture is drawn once, when both are in place.
-        self._busy = True
-        for slider, letter, value in zip(self.sliders, starts.letters, (p, q), strict=True):
-            slider.description = letter
-            slider.max = max(1.0, 1.5 * value)
-            slider.value = value
-        self._busy = False
+        with quiet(self):
+            for slider, letter, value in zip(self.sliders, starts.letters, (p, q), strict=True):
+                slider.description = letter
+                slider.max = max(1.0, 1.5 * value)
+                slider.value = value
         self.draw()
 
     @property
@@ -93,13 +93,13 @@ class StartView(widgets.VBox):
     @answered
     def draw(self) -> None:
         """Follow the start and draw its motion."""
-        if self._busy:
+        if not self._listening:
             return
         p, q = self.place
         self._on_start(p, q)
         starts = start_set(self.kind)
         energy = float(starts.energies(np.array([p]), np.array([q]))[0])
-        if not (energy < 0 and starts.inside(np.array([p]), np.array([q]))[0]):
+        if not (-np.inf < energy < 0 and starts.inside(np.array([p]), np.array([q]))[0]):
             raise BadRequest(f"no bound start here: E = {energy:.4g}; move towards the middle")
         motion = motion_from(self.kind, p, q, self.time.value / abs(energy) ** 1.5)
         update(self.figure.model, orbit_data(motion))
@@ -119,11 +119,12 @@ class StartView(widgets.VBox):
         self._worker.start()
 
     @answered
-    def _take(self, answers: list[object]) -> None:
+    def _take(self, answers: list[Refinement]) -> None:
         (answer,) = answers
-        self.message.say(answer.message, "" if answer.orbit is None else "done")  # type: ignore[attr-defined]
-        if answer.orbit is not None:  # type: ignore[attr-defined]
-            self._on_orbit(answer.orbit)  # type: ignore[attr-defined]
+        # The orbit first: showing it may say something of its motion, which matters less.
+        if answer.asked_for is not None:
+            self._on_orbit(answer.asked_for)
+        self.message.say(answer.message, "wrong" if answer.asked_for is None else "done")
 
     def _fail(self, text: str) -> None:
         self.message.say(text, "wrong")

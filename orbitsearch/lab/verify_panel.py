@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import html
+import re
 from collections.abc import Callable
 from pathlib import Path
 from typing import Any
@@ -25,7 +26,7 @@ from orbitsearch.plots import (
     update,
 )
 from orbitsearch.refine import Refinement, refine, verify_as_given
-from orbitsearch.starts import START_SETS
+from orbitsearch.starts import START_SETS, start_set
 from orbitsearch.starts_table import read_starts_csv
 
 __all__ = ["VerifyPanel"]
@@ -64,6 +65,7 @@ class VerifyPanel(widgets.VBox):
         ]  # fmt: skip
         self.pasted = widgets.Text(
             placeholder="collinear, 0.34712, 0.53272, 6.3259", description="table row",
+            continuous_update=False,
             style=_WIDE, layout=widgets.Layout(width="620px"),
             tooltip="a row of a table: start set, two numbers, period",
         )  # fmt: skip
@@ -84,6 +86,7 @@ class VerifyPanel(widgets.VBox):
         self._place = widgets.HBox([], layout=widgets.Layout(flex_flow="row wrap"))
         self._worker: Worker | None = None
         self.orbit: Orbit | None = None
+        self._from_refining = False
         self.kind.observe(lambda _: self._name_values(), "value")
         self.pasted.observe(lambda _: self._paste(), "value")
         self._name_values()
@@ -131,10 +134,11 @@ class VerifyPanel(widgets.VBox):
         text = self.pasted.value.strip()
         if not text:
             return
-        cells = [cell.strip() for cell in text.replace("\t", ",").replace(";", ",").split(",")]
+        cells = re.split(r"[\s,;]+", text.strip(" ,;"))
         if len(cells) < 4:
-            cells = text.split()
-        row = read_starts_csv("start,p,q,period\n" + ",".join(cells[:4]))[0]
+            raise BadRequest("`table row` must have a start set, two numbers and a period")
+        start_set(cells[0].lower())
+        row = read_starts_csv("start,p,q,period\n" + ",".join([cells[0].lower(), *cells[1:4]]))[0]
         self.set_guess(Start(row.start, (row.p, row.q), row.period))
         self.message.say("the row was taken over; refine it or verify it as given")
 
@@ -182,6 +186,7 @@ class VerifyPanel(widgets.VBox):
     @answered
     def _take(self, found: Refinement | Orbit | Verdict) -> None:
         said = ""
+        self._from_refining = isinstance(found, Refinement)
         if isinstance(found, Refinement):
             said = found.message
             orbit = found.orbit
@@ -207,7 +212,7 @@ class VerifyPanel(widgets.VBox):
 
     def _draw(self, orbit: Orbit | None) -> None:
         self.detail.show(orbit)
-        self._place.layout.display = "none" if orbit is None else ""
+        self._place.layout.display = "none"
         if orbit is None:
             return
         motion = motion_of(orbit)
@@ -218,15 +223,18 @@ class VerifyPanel(widgets.VBox):
                 Figure(separation_figure(data[1])),
             ]
             self._place.children = self._figures
-            return
-        for figure, one in zip(self._figures, data, strict=True):
-            update(figure.model, one)
+        else:
+            for figure, one in zip(self._figures, data, strict=True):
+                update(figure.model, one)
+        self._place.layout.display = ""
 
     @answered
     def _keep(self) -> None:
         if self.orbit is None:
             raise BadRequest("there is no orbit to keep: refine a guess first")
         with Catalog.open(self.path) as catalog:
+            if not self._from_refining and catalog.find_same(self.orbit) is None:
+                raise BadRequest("press Refine first: a new record lists both starts of its orbit")
             added = catalog.add(self.orbit, note=self.note.value.strip())
         self.number.value = added.id
         self.message.say(
