@@ -5,7 +5,7 @@ from dataclasses import replace
 from pathlib import Path
 
 import pytest
-from bokeh.events import Tap
+from bokeh.events import SelectionGeometry, Tap
 from sample_orbits import numbered, pure_braid
 
 from orbitsearch.catalog import Catalog
@@ -76,6 +76,19 @@ def tap(panel: SearchPanel, x: float, y: float) -> None:
     """What a click on the map sends."""
     plot = panel.figure.model.select_one({"name": "window figure"})
     panel._tap(Tap(plot, x=x, y=y))
+
+
+def test_a_box_on_the_map_becomes_the_window(tmp_path: Path) -> None:
+    panel = SearchPanel(tmp_path / "orbits.db")
+    plot = panel.figure.model.select_one({"name": "window figure"})
+    box = {"type": "rect", "x0": 0.4, "x1": 0.3, "y0": -0.1, "y1": 0.2}
+    # While it is drawn nothing happens yet, and a tap sends a geometry, too.
+    panel._box(SelectionGeometry(plot, geometry=box, final=False))
+    panel._box(SelectionGeometry(plot, geometry={"type": "point", "x": 0.1, "y": 0.1}))
+    assert panel.controls.window == (0.0, 0.6, 0.0, 0.6)
+    panel._box(SelectionGeometry(plot, geometry=box))
+    assert panel.controls.window == (0.3, 0.4, 0.0, 0.2)
+    assert panel._map.window == (0.3, 0.4, 0.0, 0.2)
 
 
 def test_the_number_fields_and_the_sliders_follow_each_other(tmp_path: Path) -> None:
